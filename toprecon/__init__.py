@@ -21,7 +21,17 @@ _PUBLIC = {
     "run_study": "toprecon.study",
 }
 
-__all__ = [*_PUBLIC, "__version__"]
+__all__ = [
+    "EventTable",
+    "MigrationMatrix",
+    "StudyPlan",
+    "StudyResult",
+    "__version__",
+    "generate",
+    "open_events",
+    "reconstruct",
+    "run_study",
+]
 
 
 def __getattr__(name: str) -> Any:
