@@ -92,6 +92,12 @@ class CutFlow:
             self.variances + other.variances,
         )
 
+    def scaled(self, factor: float) -> CutFlow:
+        """Return the flow with all weights multiplied by a factor."""
+        return dataclasses.replace(
+            self, sums=self.sums * factor, variances=self.variances * factor**2
+        )
+
     def __str__(self) -> str:
         width = max(len(step) for step in self.steps)
         rows = zip(self.steps, self.counts, self.efficiency, strict=True)

@@ -211,6 +211,17 @@ class EventTable:
             partial.unlink(missing_ok=True)
         return target
 
+    @staticmethod
+    def is_saved(path: str | os.PathLike[str]) -> bool:
+        """Whether a file is an event table written by :meth:`save`."""
+        import pyarrow as pa
+        import pyarrow.parquet as pq
+
+        try:
+            return _METADATA_KEY in (pq.read_schema(path).metadata or {})
+        except (pa.ArrowException, OSError, ValueError):
+            return False
+
     @classmethod
     def load(cls, path: str | os.PathLike[str]) -> Self:
         """Read a table written by :meth:`save`.
