@@ -152,9 +152,9 @@ class FitOptions(Options):
     lepton: LeptonResolution = option(
         None, "electrons and muons", factory=LeptonResolution
     )
-    max_iterations: int = option(20, "steps after which a fit is given up", low=1)
-    half_steps_after: int = option(
-        6, "full steps before the steps are halved, which stops oscillations", low=0
+    max_iterations: int = option(30, "steps after which a fit is given up", low=1)
+    full_steps: int = option(
+        3, "full steps before their length adapts, which stops oscillations", low=0
     )
     tolerance: float = option(
         1e-3, "largest violation of a constraint at convergence", unit="GeV", above=0

@@ -18,6 +18,7 @@ from toprecon.pairing.fit_photon import photon_pull, radiator_exponent
 
 FloatArray = NDArray[np.float64]
 
+_SHORTEST = 0.1  # of a step, when steps are adapted
 _VANISHED = 1e-4  # of the beam energy: a photon below is left to the branch without
 
 
@@ -136,6 +137,8 @@ class _State:
     offset: FloatArray  # of soft constraints [GeV], shape (C, B)
     photon: FloatArray
     chi2: FloatArray
+    move: FloatArray  # last proposed, in resolutions, shape (P, B)
+    fraction: FloatArray  # of it that was taken
 
     def keep(self, which: NDArray[np.bool_]) -> _State:
         return _State(
@@ -145,6 +148,8 @@ class _State:
             self.offset[..., which],
             self.photon[which],
             self.chi2[which],
+            self.move[..., which],
+            self.fraction[which],
         )
 
 
@@ -167,6 +172,8 @@ def _solve_branch(model: Model, measured: Measured, side: float) -> Solution:
         np.zeros((model.n_constraints, n_fits)),
         np.zeros(n_fits),
         np.full(n_fits, np.inf),
+        np.zeros((measured.values.shape[0] * 3, n_fits)),
+        np.ones(n_fits),
     )
     if side != 0.0:
         state.photon = _first_photon(model, measured, side)
@@ -181,8 +188,8 @@ def _solve_branch(model: Model, measured: Measured, side: float) -> Solution:
         open_fits = _record(model, found, state, point, pulls, iteration, side)
         if iteration == options.max_iterations or not open_fits.any():
             break
-        halve = iteration >= options.half_steps_after
-        _step(state, point, pulls, photon_sigma, softness, halve=halve)
+        adapt = iteration >= options.full_steps
+        _step(state, point, pulls, photon_sigma, softness, adapt=adapt)
         # packing costs about a third of an iteration
         if np.count_nonzero(open_fits) < 0.8 * len(open_fits):
             state = state.keep(open_fits)
@@ -251,7 +258,8 @@ def _record(
     done = (
         finite
         & (size < options.tolerance)
-        & (np.abs(chi2 - state.chi2) < options.chi2_tolerance)
+        # a shortened step changes the chi-square less
+        & (np.abs(chi2 - state.chi2) < options.chi2_tolerance * state.fraction)
     )
     state.chi2 = chi2
     still = ~found.converged[state.index]
@@ -272,26 +280,40 @@ def _step(
     photon_sigma: FloatArray | None,
     softness: FloatArray,
     *,
-    halve: bool,
+    adapt: bool,
 ) -> None:
-    """Move to the minimum of the linearised problem, or half-way there."""
+    """Move towards the minimum of the linearised problem.
+
+    The curvature of the constraints is not in the linearised problem, so that the
+    steps of one fit shrink or grow by a nearly constant, often negative factor. If
+    a proposal is ``ratio`` times the last one, of which ``fraction`` was taken, the
+    fraction ``fraction/(1 - ratio)`` would have led to the end at once (the secant
+    rule for the step length).
+    """
     right = point.violation + np.einsum("cpb,pb->cb", point.slopes, pulls)
     factor = cholesky(constraint_covariance(point.slopes, softness))
     multipliers = _solve_upper(factor, solve_lower(factor, right))
     shift = np.einsum("cpb,cb->pb", point.slopes, multipliers)
     measured = state.measured
     n = 3 * len(measured.values)
-    x = measured.values - measured.sigma * shift[:n].reshape(measured.values.shape)
+    move = pulls - shift
+    if adapt:
+        last = state.move
+        ratio = np.einsum("pb,pb->b", move[:n], last) / np.einsum(
+            "pb,pb->b", last, last
+        )
+        wanted = state.fraction / np.maximum(1.0 - ratio, 1e-3)
+        state.fraction = np.clip(np.nan_to_num(wanted, nan=0.5), _SHORTEST, 1.0)
+    state.move = move[:n]
+    fraction = state.fraction
+    x = state.x + fraction * measured.sigma * move[:n].reshape(state.x.shape)
     offset = softness[:, None] ** 2 * multipliers
-    if halve:
-        x = 0.5 * (x + state.x)
-        offset = 0.5 * (offset + state.offset)
+    offset = state.offset + fraction * (offset - state.offset)
     # an energy may not jump through zero; inactive at the solution
     np.maximum(x[:, 0], 0.1 * state.x[:, 0], out=x[:, 0])
     state.x, state.offset = x, offset
     if photon_sigma is not None:
-        move = photon_sigma * (pulls[-1] - shift[-1])
-        energy = state.photon + (0.5 * move if halve else move)
+        energy = state.photon + fraction * photon_sigma * move[-1]
         limit = 0.5 * measured.sqrt_s
         state.photon = np.clip(
             energy, 0.1 * state.photon, 0.5 * (state.photon + limit)
