@@ -1,0 +1,12 @@
+"""Selection: which events are worth reconstructing.
+
+*Takes* Events. *Gives* a :class:`Selection`: for every event the step it fails first,
+and the numbers the steps look at; no event is removed.
+"""
+
+from __future__ import annotations
+
+from toprecon.selection.options import Requirements, SelectionOptions
+from toprecon.selection.preselection import OBSERVABLES, Selection, select
+
+__all__ = ["OBSERVABLES", "Requirements", "Selection", "SelectionOptions", "select"]
