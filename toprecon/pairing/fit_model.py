@@ -167,16 +167,14 @@ def linearise(
     Linear
         Momenta, violations and scaled slopes.
     """
-    p, directions = _objects(model, measured, x)
+    p, directions = _objects(measured, x)
     sine = math.sin(model.options.crossing_angle / 2)
     missing = np.zeros((4, x.shape[2]))
     missing[0] = measured.sqrt_s
     missing[1] = measured.sqrt_s * sine
     unit = None
     if photon is not None and side is not None:
-        unit = photon_momentum(
-            np.ones_like(photon), side, model.options.crossing_angle
-        )
+        unit = photon_momentum(np.ones_like(photon), side, model.options.crossing_angle)
         missing -= photon * unit
     n = x.shape[0]
     missing -= p[:n].sum(axis=0)
@@ -184,17 +182,13 @@ def linearise(
         p[5, 1:] = missing[1:]
         p[5, 0] = np.sqrt(missing[1] ** 2 + missing[2] ** 2 + missing[3] ** 2)
     violation = np.empty((model.n_constraints, x.shape[2]))
-    slopes = np.empty(
-        (model.n_constraints, 3 * n + (unit is not None), x.shape[2])
-    )
+    slopes = np.empty((model.n_constraints, 3 * n + (unit is not None), x.shape[2]))
     rows = _Rows(p, directions, measured.sigma[:, 0], violation, slopes, unit)
     _fill(model, rows, missing)
     return Linear(p, violation, slopes, directions)
 
 
-def _objects(
-    model: Model, measured: Measured, x: FloatArray
-) -> tuple[FloatArray, FloatArray]:
+def _objects(measured: Measured, x: FloatArray) -> tuple[FloatArray, FloatArray]:
     """Momenta of the measured objects, and their scaled spatial derivatives."""
     energy, theta, phi = x[:, 0], x[:, 1], x[:, 2]
     n, size = energy.shape
@@ -329,9 +323,7 @@ def _fill(model: Model, rows: _Rows, missing: FloatArray) -> None:
     )
 
 
-def _fill_balance(
-    rows: _Rows, missing: FloatArray, flight: FloatArray | None
-) -> None:
+def _fill_balance(rows: _Rows, missing: FloatArray, flight: FloatArray | None) -> None:
     """Energy, and without a neutrino momentum; what is missing has to vanish."""
     everything = slice(0, 6)
     gradient = np.zeros_like(missing)

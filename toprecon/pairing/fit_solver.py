@@ -69,9 +69,7 @@ def solve(model: Model, measured: Measured) -> Solution:
             return best
         for side in (1.0, -1.0):
             other = _solve_branch(model, measured, side)
-            better = other.converged & (
-                ~best.converged | (other.chi2 < best.chi2)
-            )
+            better = other.converged & (~best.converged | (other.chi2 < best.chi2))
             for name in ("x", "photon", "side", "chi2", "converged"):
                 mine, theirs = getattr(best, name), getattr(other, name)
                 mine[..., better] = theirs[..., better]
@@ -80,10 +78,7 @@ def solve(model: Model, measured: Measured) -> Solution:
 
 
 def cholesky(matrix: FloatArray) -> FloatArray:
-    """Return the lower Cholesky factors of symmetric matrices, shape (C, C, B).
-
-    A matrix that is not positive definite gives NaN.
-    """
+    """Return the lower Cholesky factors; NaN where not positive definite."""
     factor = matrix.copy()
     for j in range(len(factor)):
         factor[j, j] = np.sqrt(factor[j, j])
@@ -115,10 +110,7 @@ def _solve_upper(factor: FloatArray, right: FloatArray) -> FloatArray:
 
 
 def constraint_covariance(slopes: FloatArray, softness: FloatArray) -> FloatArray:
-    """Return S = A V A^T plus the softness of the constraints, shape (C, C, B).
-
-    Only the lower triangle is filled; the rest is 0.
-    """
+    """Return the lower triangle of A V A^T + softness^2, shape (C, C, B); rest 0."""
     n = len(slopes)
     out = np.zeros((n, n, slopes.shape[2]))
     for i in range(n):
@@ -197,16 +189,12 @@ def _solve_branch(model: Model, measured: Measured, side: float) -> Solution:
 
 
 def _first_photon(model: Model, measured: Measured, side: float) -> FloatArray:
-    """Photon energy with which the measured momenta balance, kept in sensible limits.
-
-    In lepton+jets the neutrino is massless: (R - k)^2 = |q - k n|^2 for the energy R
-    and momentum q that are missing. In all-hadronic events it is the longitudinal
-    momentum that is missing.
-    """
+    """Photon energy with which the measured momenta balance, within sensible limits."""
     x, velocity = measured.values, measured.velocity
     size = x[:, 0] * velocity
     z = -np.sum(size * np.cos(x[:, 1]), axis=0)
     if model.has_neutrino:
+        # massless neutrino: (R - k)^2 = |q - k n|^2 for the missing energy R and q
         sin_theta = np.sin(x[:, 1])
         q_x = -np.sum(size * sin_theta * np.cos(x[:, 2]), axis=0)
         q_y = -np.sum(size * sin_theta * np.sin(x[:, 2]), axis=0)
@@ -218,19 +206,15 @@ def _first_photon(model: Model, measured: Measured, side: float) -> FloatArray:
     return np.where(np.isfinite(energy), np.clip(energy, low, high), low)
 
 
-def _pulls(
-    state: _State, has_photon: bool
-) -> tuple[FloatArray, FloatArray | None]:
-    """(measured - x)/sigma of all parameters, shape (P, B); resolution of the photon.
-
-    The prior eta^2 of the photon is linearised about the present energy: it acts like
-    a measurement with the resolution dk/d eta and the pull -eta.
-    """
+def _pulls(state: _State, has_photon: bool) -> tuple[FloatArray, FloatArray | None]:
+    """(measured - x)/sigma of all parameters, shape (P, B); resolution of the photon."""
     measured = state.measured
     pulls = (measured.values - state.x) / measured.sigma
     flat = pulls.reshape(-1, pulls.shape[2])
     if not has_photon:
         return flat, None
+    # the prior eta^2, linearised about the present energy, acts like a measurement
+    # with the resolution dk/d eta and the pull -eta
     eta, slope = photon_pull(
         state.photon, 0.5 * measured.sqrt_s, radiator_exponent(measured.sqrt_s)
     )
@@ -315,6 +299,4 @@ def _step(
     if photon_sigma is not None:
         energy = state.photon + fraction * photon_sigma * move[-1]
         limit = 0.5 * measured.sqrt_s
-        state.photon = np.clip(
-            energy, 0.1 * state.photon, 0.5 * (state.photon + limit)
-        )
+        state.photon = np.clip(energy, 0.1 * state.photon, 0.5 * (state.photon + limit))
