@@ -1,0 +1,93 @@
+"""One column of a file as plain arrays, and what a file of columns can do."""
+
+from __future__ import annotations
+
+import dataclasses
+from collections.abc import Iterable
+from typing import Any, Protocol
+
+import awkward as ak
+import numpy as np
+from numpy.typing import NDArray
+
+from toprecon.errors import InputError
+
+
+@dataclasses.dataclass(frozen=True)
+class Column:
+    """One column of a range of entries.
+
+    Parameters
+    ----------
+    values : array, shape (N,) or (E, n)
+        One number per event, or all numbers of all events one after another; two
+        dimensions for arrays of fixed length.
+    counts : array of int, shape (E,), optional
+        Numbers per event; None for one per event and for fixed length.
+    """
+
+    values: NDArray[Any]
+    counts: NDArray[np.int64] | None = None
+
+
+class Columns(Protocol):
+    """A file that holds one column per quantity."""
+
+    path: str
+    n_entries: int
+    types: dict[str, str]
+
+    def read(self, names: Iterable[str], start: int, stop: int) -> dict[str, Column]:
+        """Return columns of a range of entries."""
+
+    def close(self) -> None:
+        """Close the file."""
+
+
+def as_column(array: ak.Array, *, where: str) -> Column:
+    """Return an awkward array as a column of numbers.
+
+    Parameters
+    ----------
+    array : ak.Array
+        Flat, of fixed length or ragged, of numbers; None becomes NaN.
+    where : str
+        File and name of the column, for the message.
+
+    Returns
+    -------
+    Column
+        Views of the array where possible.
+
+    Raises
+    ------
+    InputError
+        If it holds something else than numbers.
+    """
+    layout = array.layout
+    if isinstance(layout, ak.contents.ListOffsetArray | ak.contents.ListArray):
+        if layout.parameter("__array__") is None:
+            layout = layout.to_ListOffsetArray64(True)
+            offsets = np.asarray(layout.offsets.data)
+            content = layout.content[: offsets[-1]]
+            return Column(_numbers(content, where), np.diff(offsets))
+    elif isinstance(layout, ak.contents.RegularArray):
+        return Column(_numbers(ak.to_numpy(array).reshape(len(array), -1), where))
+    return Column(_numbers(layout, where))
+
+
+def _numbers(content: Any, where: str) -> NDArray[Any]:
+    """Numbers as a numpy array, booleans as integers."""
+    try:
+        values = ak.to_numpy(ak.Array(content))
+    except (TypeError, ValueError):
+        values = np.zeros(0, dtype=object)
+    if isinstance(values, np.ma.MaskedArray):
+        values = np.ma.filled(values.astype(np.float64), np.nan)
+    if values.dtype == bool:
+        return values.astype(np.int8)
+    if values.dtype.kind not in "iuf":
+        kind = ak.type(ak.Array(content)).content
+        msg = f"{where}: numbers are required; got {kind}"
+        raise InputError(msg)
+    return np.asarray(values)
