@@ -1,0 +1,29 @@
+"""Generated events: top pairs with truth, and what a detector sees of them.
+
+Takes: GenerationOptions, a number of events and a seed.
+Gives: Events with truth; weights for other couplings or another angular law.
+"""
+
+from __future__ import annotations
+
+from toprecon.generation.amplitudes import (
+    angle_weights,
+    coupling_weights,
+    matrix_element,
+)
+from toprecon.generation.generator import generate
+from toprecon.generation.options import Decays, Flavour, GenerationOptions
+from toprecon.generation.rates import pair_cross_section_with_radiation
+from toprecon.generation.response_options import ResponseOptions
+
+__all__ = [
+    "Decays",
+    "Flavour",
+    "GenerationOptions",
+    "ResponseOptions",
+    "angle_weights",
+    "coupling_weights",
+    "generate",
+    "matrix_element",
+    "pair_cross_section_with_radiation",
+]
