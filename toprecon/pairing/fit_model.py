@@ -77,7 +77,7 @@ class Model:
         o = self.options
         soft: list[float] = []
         if o.four_momentum:
-            soft += [o.energy_spread] + [0.0] * (0 if self.has_neutrino else 3)
+            soft += [o.energy_width] + [0.0] * (0 if self.has_neutrino else 3)
         if o.w_masses:
             soft += [o.w_width] * 2
         if o.top_masses is TopMasses.EQUAL:

@@ -3,7 +3,9 @@
 The default resolutions are those of Durham jets against quarks before gluon
 radiation, in simulated top pairs at 500 GeV: half the central 68 % interval of
 matched jets. They hold the effect of radiation and of lost neutrinos, not only that
-of a detector, and have to be measured anew for other samples.
+of a detector, and have to be measured anew for other samples. The softness of the
+constraints stands for what such resolutions leave out (particles clustered into the
+wrong jet, natural widths, beam spread); it was chosen for the best top direction.
 """
 
 from __future__ import annotations
@@ -131,15 +133,21 @@ class FitOptions(Options):
     w_mass: float = option(W_MASS, "mass of the W", unit="GeV", above=0)
     top_mass: float = option(TOP_MASS, "mass of the top", unit="GeV", above=0)
     w_width: float = option(
-        0.0, "Gaussian softness of each W mass; 0 is exact", unit="GeV", low=0
+        5.0, "Gaussian softness of each W mass; 0 is exact", unit="GeV", low=0
     )
     top_width: float = option(
-        0.0, "Gaussian softness of each top mass; 0 is exact", unit="GeV", low=0
+        5.0, "Gaussian softness of each top mass; 0 is exact", unit="GeV", low=0
     )
-    energy_spread: float = option(
-        0.0, "Gaussian spread of the collision energy", unit="GeV", low=0
+    energy_width: float = option(
+        5.0, "Gaussian softness of the energy balance; 0 is exact", unit="GeV", low=0
     )
-    isr: bool = option(True, "one photon along a beam, with the radiator as its prior")
+    isr: bool = option(
+        True,
+        "one photon along a beam, with the radiator as its prior; needs four_momentum",
+    )
+    isr_gain: float = option(
+        2.0, "chi-square by which a photon must improve on none to be taken", low=0
+    )
     crossing_angle: float = option(
         0.0,
         "angle between the beams, in the horizontal plane, if not undone on reading",

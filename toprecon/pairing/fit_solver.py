@@ -3,7 +3,8 @@
 Every fit of a block takes the same steps at the same time; those that have converged
 leave the block. With a photon the energy |p_z| has a kink at zero, over which the
 iteration would swing to and fro: three problems are solved instead (photon along the
-electron beam, along the positron beam, none) and the lowest valid chi-square wins.
+electron beam, along the positron beam, none) and the lowest valid chi-square wins; a
+photon has to be worth its parameter.
 """
 
 from __future__ import annotations
@@ -69,7 +70,10 @@ def solve(model: Model, measured: Measured) -> Solution:
             return best
         for side in (1.0, -1.0):
             other = _solve_branch(model, measured, side)
-            better = other.converged & (~best.converged | (other.chi2 < best.chi2))
+            needed = np.where(best.side == 0.0, model.options.isr_gain, 0.0)
+            better = other.converged & (
+                ~best.converged | (other.chi2 + needed < best.chi2)
+            )
             for name in ("x", "photon", "side", "chi2", "converged"):
                 mine, theirs = getattr(best, name), getattr(other, name)
                 mine[..., better] = theirs[..., better]
