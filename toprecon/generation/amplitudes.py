@@ -215,10 +215,10 @@ class _PairFrame:
     def amplitude(self, x: Vertex, sign: int, nominal_mass: float) -> ComplexArray:
         """ubar(d1) (p_t + m) Gamma.L (-p_tbar + m) u(d2), chiral representation."""
         first, second = np.conj(self.first), self.second
-        row_right: ComplexArray = self.top_mass * first
+        row_right = np.asarray(self.top_mass * first, dtype=np.complex128)
         row_left = _times(first, _sigma_dot(self.top, -1.0))
         column_left = -_apply(_sigma_dot(self.antitop, -1.0), second)
-        column_right: ComplexArray = self.antitop_mass * second
+        column_right = np.asarray(self.antitop_mass * second, dtype=np.complex128)
         left, right = x.vector - x.axial, x.vector + x.axial
         scale = self.energy / (2 * nominal_mass)
         tensor, dipole = x.tensor * scale, x.dipole * scale

@@ -165,8 +165,8 @@ def cross_section_envelope(options: GenerationOptions) -> Envelope:
             cross_section_at_masses(
                 grid, np.full_like(grid, a), np.full_like(grid, b), sign, options
             )
-            for a in masses
-            for b in masses
+            for i, a in enumerate(masses)
+            for b in masses[: i + 1]
         ]
         limit = np.max(curves, axis=0)
         # the curve rises steeply at the threshold: cover the step to the next point

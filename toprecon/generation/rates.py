@@ -84,18 +84,18 @@ def _mean_cross_section(
 ) -> tuple[FloatArray, FloatArray]:
     """Cross section averaged over the masses of the tops, on a grid of energies."""
     masses, shares = mass_nodes(
-        options.inputs, finite_widths=options.finite_widths, n=24
+        options.inputs, finite_widths=options.finite_widths, n=16
     )
     low = 2 * float(masses.min())
     high = options.sqrt_s * (1 + 8 * options.energy_spread)
-    grid = low + (high - low) * np.linspace(0, 1, 1500) ** 2  # dense at the threshold
+    grid = low + (high - low) * np.linspace(0, 1, 800) ** 2  # dense at the threshold
     curve = np.zeros_like(grid)
-    for first, w1 in zip(masses, shares, strict=True):
-        for second, w2 in zip(masses, shares, strict=True):
-            top, antitop = np.full_like(grid, first), np.full_like(grid, second)
-            curve += (
-                w1 * w2 * cross_section_at_masses(grid, top, antitop, sign, options)
-            )
+    for i in range(len(masses)):
+        for j in range(i + 1):
+            top, antitop = np.full_like(grid, masses[i]), np.full_like(grid, masses[j])
+            sigma = cross_section_at_masses(grid, top, antitop, sign, options)
+            # the pair (i, j) stands for (j, i) too
+            curve += (2 - (i == j)) * shares[i] * shares[j] * sigma
     return grid, curve
 
 
@@ -107,7 +107,7 @@ def _over_radiation(
         wanted = sqrt_s >= options.minimum_sqrt_s_prime
         return float(np.interp(sqrt_s, grid, curve)) if wanted else 0.0
     exponent = radiation_exponent(options.sqrt_s)
-    u = (np.arange(1200) + 0.5) / 1200  # loss = u^(2/beta) is flat in the soft part
+    u = (np.arange(500) + 0.5) / 500  # loss = u^(2/beta) is flat in the soft part
     loss = u ** (2 / exponent)
     weight = radiation_weight(loss, exponent) / len(u)
     kept = np.sqrt(1 - loss)
