@@ -1,0 +1,25 @@
+"""Asymmetry: A_FB generated and reconstructed, and why they differ.
+
+*Takes* rows of the event table with weights. *Gives* mergeable sums, and from them
+A_FB, the distortion budget, flip probabilities and the spectra of the angle.
+"""
+
+from __future__ import annotations
+
+from toprecon.asymmetry.budget import STEPS, BudgetStep, DistortionBudget
+from toprecon.asymmetry.result import AsymmetryResult, ClassResult, FlipResult
+from toprecon.asymmetry.spectra import VARIANTS, AngleSpectra
+from toprecon.asymmetry.sums import AsymmetrySums, accumulate
+
+__all__ = [
+    "STEPS",
+    "VARIANTS",
+    "AngleSpectra",
+    "AsymmetryResult",
+    "AsymmetrySums",
+    "BudgetStep",
+    "ClassResult",
+    "DistortionBudget",
+    "FlipResult",
+    "accumulate",
+]

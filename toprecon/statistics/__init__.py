@@ -1,0 +1,18 @@
+"""Numbers with errors: measured values, linear error propagation, A_FB from counts.
+
+Plain arrays in and out; nothing here knows about events.
+"""
+
+from __future__ import annotations
+
+from toprecon.statistics.counting import asymmetry_from_counts, fraction_from_counts
+from toprecon.statistics.linear import Estimate, ratio
+from toprecon.statistics.measured import Measured
+
+__all__ = [
+    "Estimate",
+    "Measured",
+    "asymmetry_from_counts",
+    "fraction_from_counts",
+    "ratio",
+]

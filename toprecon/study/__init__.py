@@ -1,0 +1,82 @@
+"""The study: the one place that knows the order of the steps.
+
+Takes: files, events or an event table, and a plan.
+Gives: the event table, the result of the study and the hand-off folder.
+
+It re-exports what notebooks and the command line need from the steps.
+"""
+
+from __future__ import annotations
+
+from toprecon.events import Branch, Channel, EventTable, Helicity, PairingClass, Status
+from toprecon.io import load_layout, open_events, write_events
+from toprecon.study.chunks import (
+    check_references,
+    part_path,
+    reconstruct_chunk,
+    reconstruct_source,
+)
+from toprecon.study.cutting import Cutting, apply_cuts, passes_cut
+from toprecon.study.handoff import HandOff, check_target, read_hand_off, write_hand_off
+from toprecon.study.plan import (
+    OBSERVABLES,
+    AngleOptions,
+    BeamsOptions,
+    CutOptions,
+    Direction,
+    Frame,
+    StudyOptions,
+    StudyPlan,
+)
+from toprecon.study.reconstruction import reconstruct
+from toprecon.study.report import result_mapping, result_text
+from toprecon.study.result import CAUTIONS, BeamsResult, StudyResult, finish
+from toprecon.study.running import CHUNK_SIZE, run_study, summarise_chunk
+from toprecon.study.sums import StudySums, merge, summarise
+from toprecon.study.weights import SampleFactors, sample_factors
+
+__all__ = [
+    "CAUTIONS",
+    "CHUNK_SIZE",
+    "OBSERVABLES",
+    "AngleOptions",
+    "BeamsOptions",
+    "BeamsResult",
+    "Branch",
+    "Channel",
+    "CutOptions",
+    "Cutting",
+    "Direction",
+    "EventTable",
+    "Frame",
+    "HandOff",
+    "Helicity",
+    "PairingClass",
+    "SampleFactors",
+    "Status",
+    "StudyOptions",
+    "StudyPlan",
+    "StudyResult",
+    "StudySums",
+    "apply_cuts",
+    "check_references",
+    "check_target",
+    "finish",
+    "load_layout",
+    "merge",
+    "open_events",
+    "part_path",
+    "passes_cut",
+    "read_hand_off",
+    "reconstruct",
+    "reconstruct_chunk",
+    "reconstruct_source",
+    "result_mapping",
+    "result_text",
+    "run_study",
+    "sample_factors",
+    "summarise",
+    "summarise_chunk",
+    "write_events",
+    "write_hand_off",
+]

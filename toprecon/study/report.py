@@ -1,0 +1,231 @@
+"""The result in words and as plain data."""
+
+from __future__ import annotations
+
+import math
+from typing import TYPE_CHECKING, Any
+
+from toprecon.statistics import Measured
+
+if TYPE_CHECKING:
+    from toprecon.study.result import BeamsResult, StudyResult
+
+CLASS_NAMES = {
+    "correct": "correct",
+    "b_swapped": "b jets swapped",
+    "w_mixed": "W jets mixed",
+    "unmatched": "unmatched",
+    "leaking": "leaking",
+    "no_truth": "no truth",
+    "not_signal": "not signal",
+}
+
+STEP_NAMES = {
+    "acceptance": "acceptance",
+    "resolution": "resolution",
+    "wrong_b": "wrong b",
+    "wrong_w": "wrong W jets",
+    "unmatched": "unmatched",
+    "charge": "charge",
+    "outside": "outside phase space",
+    "background": "background",
+}
+
+
+def result_mapping(result: StudyResult) -> dict[str, Any]:
+    """Return a result as plain data for JSON.
+
+    Parameters
+    ----------
+    result : StudyResult
+        A finished study.
+
+    Returns
+    -------
+    dict
+        Numbers, text, lists and dicts only; a missing number is ``None``.
+    """
+    plan = result.plan
+    return {
+        "study": plan.study.name,
+        "channel": plan.study.channel.value,
+        "plan_hash": plan.hash,
+        "cautions": list(result.cautions),
+        "beams": _beams_mapping(result.beams),
+        "by_helicity": {n: _beams_mapping(b) for n, b in result.by_helicity.items()},
+        "statuses": result.statuses,
+        "undefined": result.undefined,
+        "samples": [sample.to_mapping() for sample in result.samples],
+        "input": result.report.to_mapping() if result.report else None,
+        "inputs": result.inputs,
+    }
+
+
+def result_text(result: StudyResult) -> str:
+    """Return a result as a table for a terminal.
+
+    Parameters
+    ----------
+    result : StudyResult
+        A finished study.
+
+    Returns
+    -------
+    str
+        Several lines of plain text, at most 90 characters wide.
+    """
+    plan = result.plan
+    lines = [f"{plan.study.name} ({plan.study.channel}, {plan.study.branch})", ""]
+    if len(result.by_helicity) != 1 or len(result.samples) > 1:
+        title = "all samples, generator weights"
+        if result.beams.is_expected:
+            title = (
+                f"beams {plan.beams.electron_polarisation:+g}, "
+                f"{plan.beams.positron_polarisation:+g}; expected at "
+                f"{plan.beams.luminosity:g} fb^-1"
+            )
+        lines += _beams_lines(title, result.beams)
+    for name, beams in result.by_helicity.items():
+        meaning = {"LR": "e-L e+R", "RL": "e-R e+L"}[name]
+        lines += _beams_lines(f"beams {name} ({meaning})", beams)
+    for observable, count in result.undefined.items():
+        if count:
+            lines.append(f"{count} events fail the cut on an undefined {observable}")
+    if result.report is not None and result.report.n_rejected:
+        lines.append(f"input: {result.report}")
+    lines.append("caution: " + ";\n         ".join(result.cautions))
+    return "\n".join(lines)
+
+
+def _number(value: float) -> float | None:
+    """Return a number, or ``None`` if it is missing."""
+    return float(value) if math.isfinite(value) else None
+
+
+def _beams_mapping(beams: BeamsResult) -> dict[str, Any]:
+    """Numbers of one setting of the beams."""
+    a = beams.asymmetry
+    flow = beams.cut_flow
+    matrix = beams.migration
+    return {
+        "expected": beams.is_expected,
+        "cut_flow": [
+            {"step": step, "count": int(n), "sum": float(s), "efficiency": _number(e)}
+            for step, n, s, e in zip(
+                flow.steps, flow.counts, flow.sums, flow.efficiency, strict=True
+            )
+        ],
+        "afb": {
+            name: getattr(a, name).to_mapping()
+            for name in (
+                "generated",
+                "generated_selected",
+                "closest",
+                "chosen",
+                "reconstructed_signal",
+                "reconstructed",
+                "shift",
+                "acceptance_shift",
+                "total_shift",
+            )
+        },
+        "expected_error": _number(a.expected_error) if beams.is_expected else None,
+        "efficiency": a.efficiency.to_mapping(),
+        "fraction_right": a.fraction_right.to_mapping(),
+        "background_share": _number(a.background_share),
+        "flips": {
+            name: getattr(a.flips, name).to_mapping()
+            for name in (
+                "forward_to_backward",
+                "backward_to_forward",
+                "slope",
+                "offset",
+                "flipped",
+            )
+        },
+        "by_class": {
+            name: {
+                "count": item.count,
+                "share": item.share.to_mapping(),
+                "generated": item.generated.to_mapping(),
+                "reconstructed": item.reconstructed.to_mapping(),
+                "shift": item.shift.to_mapping(),
+                "flipped": item.flipped.to_mapping(),
+            }
+            for name, item in a.by_class.items()
+        },
+        "budget": {s.name: s.shift.to_mapping() for s in a.budget.steps},
+        "migration": {
+            "true_edges": list(matrix.true_binning.edges),
+            "reco_edges": list(matrix.reco_binning.edges),
+            "counts": matrix.counts.tolist(),
+            "generated": matrix.generated.tolist(),
+            "missed": matrix.missed.tolist(),
+            "from_outside": matrix.from_outside.tolist(),
+            "background": matrix.background.tolist(),
+        },
+    }
+
+
+def _beams_lines(title: str, beams: BeamsResult) -> list[str]:
+    """Lines of one setting of the beams."""
+    a = beams.asymmetry
+    width = max(len(step) for step in beams.cut_flow.steps)
+    lines = [title, "-" * len(title)]
+    lines += [
+        f"  {step:<{width}}  {total:>12,.0f}  {share:8.4f}"
+        for step, total, share in zip(
+            beams.cut_flow.steps,
+            beams.cut_flow.sums,
+            beams.cut_flow.efficiency,
+            strict=True,
+        )
+    ]
+    rows = [
+        ("generated, all signal", a.generated, None),
+        ("generated, selected", a.generated_selected, a.acceptance_shift),
+        ("reconstructed, signal", a.reconstructed_signal, a.shift),
+    ]
+    if a.background_share:
+        rows.append(("reconstructed, all", a.reconstructed, a.total_shift))
+    lines += ["", f"  {'A_FB':<24}{'value':>20}{'shift':>22}"]
+    references = ("", "to all", "to selected", "to all")
+    for (name, value, shift), reference in zip(rows, references, strict=False):
+        change = "" if shift is None else f"{_signed(shift)} {reference}"
+        lines.append(f"  {name:<24}{value!s:>20}    {change}".rstrip())
+    if beams.is_expected:
+        lines.append(f"  expected error of data: {a.expected_error:.4f}")
+    f = a.flips
+    lines += [
+        "",
+        f"  flips: a = {f.forward_to_backward}, b = {f.backward_to_forward}",
+        f"  slope 1-a-b = {f.slope}, offset b-a = {f.offset}",
+        f"  right among matched: {a.fraction_right}",
+        "",
+        f"  {'class':<18}{'share':>18}{'A_FB generated':>20}{'reconstructed':>20}",
+    ]
+    lines += [
+        f"  {CLASS_NAMES[name]:<18}{c.share!s:>18}{c.generated!s:>20}"
+        f"{c.reconstructed!s:>20}"
+        for name, c in a.by_class.items()
+    ]
+    budget = ", ".join(
+        f"{STEP_NAMES[s.name]} {s.shift.value:+.4f}"
+        for s in a.budget.steps
+        if s.shift.value
+    )
+    lines += ["", *_wrapped(f"shift of A_FB by cause: {budget}"), ""]
+    return lines
+
+
+def _signed(shift: Measured) -> str:
+    """Return a shift with its sign."""
+    text = str(shift)
+    return text if text.startswith("-") else f"+{text}"
+
+
+def _wrapped(text: str) -> list[str]:
+    """Text in lines of a terminal, indented."""
+    import textwrap
+
+    return textwrap.wrap(text, width=88, initial_indent="  ", subsequent_indent="    ")
