@@ -8,6 +8,14 @@ from __future__ import annotations
 
 from toprecon.pairing.candidates import OBSERVABLES, build
 from toprecon.pairing.chisquare import contributions, pair
+from toprecon.pairing.fit_blocks import fit
+from toprecon.pairing.fit_options import (
+    FitOptions,
+    JetResolution,
+    LeptonResolution,
+    TopMasses,
+)
+from toprecon.pairing.fit_result import FIT_OBSERVABLES, FitResult
 from toprecon.pairing.options import (
     MissingSource,
     NeutrinoMethod,
@@ -19,7 +27,12 @@ from toprecon.pairing.options import (
 )
 
 __all__ = [
+    "FIT_OBSERVABLES",
     "OBSERVABLES",
+    "FitOptions",
+    "FitResult",
+    "JetResolution",
+    "LeptonResolution",
     "MissingSource",
     "NeutrinoMethod",
     "NeutrinoOptions",
@@ -27,7 +40,9 @@ __all__ = [
     "TagUse",
     "TermName",
     "TermOptions",
+    "TopMasses",
     "build",
     "contributions",
+    "fit",
     "pair",
 ]
