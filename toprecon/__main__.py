@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import sys
 
-from toprecon.cli.main import main
+from toprecon.cli.entry import main
 
 if __name__ == "__main__":
     sys.exit(main())

@@ -159,7 +159,7 @@ def merge(sums: Mapping[ChunkRef, StudySums]) -> StudySums:
     """
     ordered = [sums[ref] for ref in sorted(sums)]
     if not ordered:
-        msg = "study: at least one chunk of events is required; got none"
+        msg = "study: at least one event is required; the files hold none"
         raise StudyError(msg)
     total = ordered[0]
     for part in ordered[1:]:

@@ -1,0 +1,151 @@
+"""What every subcommand does."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import os
+import subprocess
+import sys
+from collections.abc import Callable
+from concurrent.futures import ProcessPoolExecutor
+from pathlib import Path
+from typing import Any
+
+from toprecon.errors import InputError, MissingPackageError, OptionError
+from toprecon.study import StudyPlan, check_target, result_text, run_study
+
+FIRST_NOTEBOOK = Path("notebooks") / "01_first_look.ipynb"
+
+
+def study(options: argparse.Namespace) -> int:
+    """Carry out a study.
+
+    Parameters
+    ----------
+    options : Namespace
+        Arguments of ``toprecon study``.
+
+    Returns
+    -------
+    int
+        0.
+
+    Raises
+    ------
+    OptionError
+        If a setting or the number of workers is wrong.
+    """
+    if options.workers < 1:
+        msg = f"--workers: must be >= 1; got {options.workers}"
+        raise OptionError(msg)
+    plan = StudyPlan.load(options.plan) if options.plan else StudyPlan()
+    plan = plan.with_settings(dict(_setting(text) for text in options.settings))
+    if options.out:
+        check_target(Path(options.out), replace=options.replace)
+    arguments: dict[str, Any] = {
+        "layout": options.layout,
+        "parts": options.parts,
+        "progress": _progress(),
+    }
+    if options.workers == 1:
+        result = run_study(options.files, plan, **arguments)
+    else:
+        with ProcessPoolExecutor(options.workers) as executor:
+            result = run_study(options.files, plan, executor=executor, **arguments)
+    if options.out:
+        folder = result.hand_off(options.out, replace=options.replace)
+        print(f"hand-off written to {folder}", file=sys.stderr)
+    if options.json:
+        print(json.dumps(result.to_mapping(), allow_nan=False))
+    else:
+        print(result_text(result))
+    return 0
+
+
+def plan(_: argparse.Namespace) -> int:
+    """Print the default plan; returns 0."""
+    print(StudyPlan().to_toml(), end="")
+    return 0
+
+
+def lab(options: argparse.Namespace) -> int:
+    """Serve a folder with JupyterLab: token on, loopback only.
+
+    Parameters
+    ----------
+    options : Namespace
+        Arguments of ``toprecon lab``.
+
+    Returns
+    -------
+    int
+        Exit code of the server.
+
+    Raises
+    ------
+    InputError
+        Outside a clone, if no folder is given, or if the folder does not exist.
+    MissingPackageError
+        If JupyterLab is not installed.
+    """
+    folder = Path(options.folder) if options.folder else _clone()
+    if folder is None:
+        msg = (
+            "lab: a folder to serve is required outside a clone of the project; run "
+            "'toprecon lab FOLDER'"
+        )
+        raise InputError(msg)
+    if not folder.is_dir():
+        msg = f"lab: a folder is required; {str(folder)!r} is none"
+        raise InputError(msg)
+    try:
+        import jupyterlab  # noqa: F401
+    except ImportError as error:
+        msg = (
+            "lab: JupyterLab is required, but not installed; run "
+            "pip install 'toprecon[lab]'"
+        )
+        raise MissingPackageError(msg) from error
+    command = [
+        *(sys.executable, "-m", "jupyterlab", "--ip=127.0.0.1"),
+        f"--port={options.port}",
+        f"--ServerApp.root_dir={folder.resolve()}",
+    ]
+    if (folder / FIRST_NOTEBOOK).is_file():
+        command.append(f"--LabApp.default_url=/lab/tree/{FIRST_NOTEBOOK.as_posix()}")
+    if options.no_browser:
+        command.append("--no-browser")
+    if getattr(os, "geteuid", lambda: 1)() == 0:  # the server refuses root otherwise
+        command.append("--allow-root")
+    return subprocess.run(command, check=False).returncode
+
+
+def _clone() -> Path | None:
+    """Folder of the clone that the command is run in, if it is."""
+    here = Path.cwd()
+    for folder in (here, *here.parents):
+        if (folder / FIRST_NOTEBOOK).is_file() and (folder / "toprecon").is_dir():
+            return folder
+    return None
+
+
+def _setting(text: str) -> tuple[str, str]:
+    """Split ``section.key=value``."""
+    path, sign, value = text.partition("=")
+    if not sign or not path:
+        msg = f"--set: SECTION.KEY=VALUE is required; got {text!r}"
+        raise OptionError(msg)
+    return path.strip(), value.strip()
+
+
+def _progress() -> Callable[[int, int], None] | None:
+    """Progress on the error stream of a terminal, nothing elsewhere."""
+    if not sys.stderr.isatty():
+        return None
+
+    def show(done: int, total: int) -> None:
+        end = "\n" if done == total else ""
+        print(f"\r{done} of {total} chunks", end=end, file=sys.stderr, flush=True)
+
+    return show
