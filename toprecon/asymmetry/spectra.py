@@ -18,6 +18,10 @@ BINS = Binning.regular(40, -1.0, 1.0)
 FLIP_BINS = Binning.regular(10, 0.0, 1.0)
 """Bins of |cos(theta)| for the flip fraction."""
 
+SIGNED_FLIP_BINS = Binning(
+    (*(-x for x in reversed(FLIP_BINS.edges[1:])), *FLIP_BINS.edges)
+)
+
 VARIANTS = {
     "generated": "generated, all signal events",
     "generated_selected": "generated, selected signal events",
@@ -108,12 +112,12 @@ class AngleSpectra:
         signal = table["is_signal"]
         chosen_signal = selected & signal
         process = table.is_signal_process
-        true, reco = table["cos_theta_true"], table["cos_theta_reco"]
-        wanted: dict[str, tuple[Any, Any]] = {
+        true, reco = "cos_theta_true", "cos_theta_reco"
+        wanted: dict[str, tuple[str, Any]] = {
             "generated": (true, signal),
             "generated_selected": (true, chosen_signal),
-            "closest": (table["cos_theta_closest"], chosen_signal),
-            "chosen": (table["cos_theta_chosen"], chosen_signal),
+            "closest": ("cos_theta_closest", chosen_signal),
+            "chosen": ("cos_theta_chosen", chosen_signal),
             "reconstructed_signal": (reco, chosen_signal),
             "outside": (reco, selected & process & ~signal),
             "background": (reco, selected & ~process),
@@ -122,37 +126,40 @@ class AngleSpectra:
             mask = chosen_signal & (table["pairing_class"] == item)
             wanted[f"class.{item.name.lower()}"] = (reco, mask)
         sums, variances = {}, {}
-        for name, (values, mask) in wanted.items():
-            sums[name], variances[name] = _fill(values[mask], weight[mask])
-        flips, flips_variances = _flips(
-            true[chosen_signal], reco[chosen_signal], weight[chosen_signal]
-        )
+        for name, (column, mask) in wanted.items():
+            index = table.bins(column, BINS)
+            sums[name], variances[name] = _fill(index[mask], weight[mask])
+        flips, flips_variances = _flips(table, chosen_signal, weight)
         return cls(sums, variances, flips, flips_variances)
 
 
-def _fill(values: FloatArray, weight: FloatArray) -> tuple[FloatArray, FloatArray]:
+def _fill(
+    index: NDArray[np.int16], weight: FloatArray
+) -> tuple[FloatArray, FloatArray]:
     """Add weights and squared weights per fine bin."""
-    index = BINS.digitise(values)
-    good = index >= 0
-    index, weight = index[good], weight[good]
+    n = len(BINS) + 1  # the first cell takes what is in no bin
+    cell = index + np.int16(1)
     return (
-        np.bincount(index, weight, minlength=len(BINS)).astype(np.float64),
-        np.bincount(index, weight**2, minlength=len(BINS)).astype(np.float64),
+        np.bincount(cell, weight, minlength=n).astype(np.float64)[1:],
+        np.bincount(cell, weight**2, minlength=n).astype(np.float64)[1:],
     )
 
 
 def _flips(
-    true: FloatArray, reco: FloatArray, weight: FloatArray
+    table: EventTable, mask: NDArray[np.bool_], weight: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Kept and flipped events by hemisphere and |cos(theta)|."""
-    index = FLIP_BINS.digitise(np.abs(true))
+    true, reco = table["cos_theta_true"][mask], table["cos_theta_reco"][mask]
+    index = table.bins("cos_theta_true", SIGNED_FLIP_BINS)[mask].astype(np.int64)
+    n = len(FLIP_BINS)
+    folded = np.where(index >= n, index - n, n - 1 - index)
     good = (index >= 0) & np.isfinite(reco)
     forward, flipped = true >= 0, (true >= 0) != (reco >= 0)
-    cell = (forward * 2 + flipped) * len(FLIP_BINS) + index
-    cell, weight = cell[good], weight[good]
-    shape = (2, 2, len(FLIP_BINS))
+    cell = ((forward * 2 + flipped) * n + folded)[good]
+    w = weight[mask][good]
+    shape = (2, 2, n)
     size = int(np.prod(shape))
     return (
-        np.bincount(cell, weight, minlength=size).astype(np.float64).reshape(shape),
-        np.bincount(cell, weight**2, minlength=size).astype(np.float64).reshape(shape),
+        np.bincount(cell, w, minlength=size).astype(np.float64).reshape(shape),
+        np.bincount(cell, w**2, minlength=size).astype(np.float64).reshape(shape),
     )

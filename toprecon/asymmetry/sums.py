@@ -22,7 +22,6 @@ from toprecon.asymmetry.spectra import AngleSpectra
 from toprecon.asymmetry.state import (
     BACKGROUND,
     N_CATEGORIES,
-    N_COMPONENTS,
     OUTSIDE,
     REJECTED,
 )
@@ -108,40 +107,46 @@ def accumulate(
     )
     category[is_signal & ~selected] = REJECTED
     rows = np.flatnonzero(category >= 0)
-    u = _components(table, rows, selected[rows])
-    w, c = weight[rows], category[rows]
-    first = np.zeros((N_CATEGORIES, N_COMPONENTS))
-    for i in range(N_COMPONENTS):
-        first[:, i] = np.bincount(c, w * u[i], minlength=N_CATEGORIES)
-    second = np.zeros((N_CATEGORIES, N_COMPONENTS, N_COMPONENTS))
-    w2 = w**2
-    for i in range(N_COMPONENTS):
-        for j in range(i, N_COMPONENTS):
-            sums = np.bincount(c, w2 * u[i] * u[j], minlength=N_CATEGORIES)
-            second[:, i, j] = second[:, j, i] = sums
-    counts = np.bincount(c, minlength=N_CATEGORIES)
+    # u takes few values: sum the weights per value, then multiply
+    pattern = _patterns(table, rows, selected[rows])
+    cell = category[rows] * len(U_VALUES) + pattern
+    size = N_CATEGORIES * len(U_VALUES)
+    w = weight[rows]
+    shape = (N_CATEGORIES, len(U_VALUES))
+    sums = np.bincount(cell, w, minlength=size).reshape(shape)
+    squares = np.bincount(cell, w**2, minlength=size).reshape(shape)
+    first = sums @ U_VALUES
+    second = np.einsum("cp,pi,pj->cij", squares, U_VALUES, U_VALUES)
+    counts = np.bincount(category[rows], minlength=N_CATEGORIES)
     spectra = AngleSpectra.accumulate(table, selected, weight)
     return AsymmetrySums(first, second, counts, spectra)
 
 
-def signs(cosines: NDArray[np.float64]) -> FloatArray:
+def _u_values() -> FloatArray:
+    """All values of u, shape (81, 7); row 27 t + 9 c + 3 h + r with signs + 1."""
+    t, c, h, r = (x.ravel() - 1.0 for x in np.indices((3, 3, 3, 3)))
+    return np.stack([np.ones_like(t), t, c, h, r, t * r, t * h], axis=1)
+
+
+U_VALUES = _u_values()
+
+
+def signs(cosines: NDArray[np.float64]) -> NDArray[np.int64]:
     """Return +1 for forward (cos >= 0), -1 for backward, 0 for NaN."""
-    return np.where(np.isnan(cosines), 0.0, np.where(cosines >= 0, 1.0, -1.0))
+    return (cosines >= 0).astype(np.int64) - (cosines < 0)
 
 
-def _components(
+def _patterns(
     table: EventTable, rows: NDArray[np.int64], selected: NDArray[np.bool_]
-) -> FloatArray:
-    """Vectors u of some rows, shape (7, R)."""
+) -> NDArray[np.int64]:
+    """Rows of :data:`U_VALUES` for some rows of the table."""
     true = signs(table["cos_theta_true"][rows])
-    reco = np.where(selected, signs(table["cos_theta_reco"][rows]), 0.0)
-    chosen = np.where(selected, signs(table["cos_theta_chosen"][rows]), 0.0)
+    reco = np.where(selected, signs(table["cos_theta_reco"][rows]), 0)
+    chosen = np.where(selected, signs(table["cos_theta_chosen"][rows]), 0)
     # a charge that the truth cannot decide makes no charge error
     chosen = np.where(selected & (chosen == 0), reco, chosen)
-    closest = np.where(selected, signs(table["cos_theta_closest"][rows]), 0.0)
+    closest = np.where(selected, signs(table["cos_theta_closest"][rows]), 0)
     is_correct = table["pairing_class"][rows] == PairingClass.CORRECT
     # the same jets in another order of addition may differ by rounding
     closest = np.where(is_correct & selected, chosen, closest)
-    return np.stack(
-        [np.ones(len(rows)), true, closest, chosen, reco, true * reco, true * chosen]
-    )
+    return 27 * (true + 1) + 9 * (closest + 1) + 3 * (chosen + 1) + (reco + 1)

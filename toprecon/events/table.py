@@ -11,6 +11,7 @@ import dataclasses
 import json
 import os
 from collections.abc import Iterator, Sequence
+from functools import cached_property
 from pathlib import Path
 from typing import Any, Self
 
@@ -18,6 +19,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from toprecon.errors import InputError, MissingFieldError, nearest
+from toprecon.events.binning import Binning
 from toprecon.events.cutflow import CutFlow
 from toprecon.events.samples import Sample
 
@@ -106,6 +108,46 @@ class EventTable:
         """Beam helicity of every row, shape (E,): -1, +1, or 0 for mixed beams."""
         values = np.array([int(s.helicity) for s in self.samples], dtype=np.int8)
         return values[self["sample"]]
+
+    def bins(self, name: str, binning: Binning) -> NDArray[np.int16]:
+        """Return the bin of every row, worked out once per column and binning.
+
+        Parameters
+        ----------
+        name : str
+            Column.
+        binning : Binning
+            Bins.
+
+        Returns
+        -------
+        array of int16, shape (E,)
+            As :meth:`Binning.digitise`: -1 outside the edges and for NaN.
+        """
+        key = (name, binning)
+        if key not in self._bins:
+            self._bins[key] = binning.digitise(self[name]).astype(np.int16)
+        return self._bins[key]
+
+    @cached_property
+    def _bins(self) -> dict[tuple[str, Binning], NDArray[np.int16]]:
+        return {}
+
+    @cached_property
+    def by_sample(self) -> tuple[tuple[NDArray[np.intp], Self], ...]:
+        """Rows of every sample, and their table without the observables."""
+        base = {n: c for n, c in self.columns.items() if "." not in n}
+        if len(self.samples) == 1:
+            part = dataclasses.replace(self, columns=base)
+            return ((np.arange(len(self)), part),)
+        out = []
+        for row, sample in enumerate(self.samples):
+            mine = np.flatnonzero(self["sample"] == row)
+            columns = {n: c[mine] for n, c in base.items()}
+            columns["sample"] = np.zeros(len(mine), dtype=np.int16)
+            part = dataclasses.replace(self, columns=columns, samples=(sample,))
+            out.append((mine, part))
+        return tuple(out)
 
     def cut_flow(self, weight: NDArray[np.float64] | None = None) -> CutFlow:
         """Return the cut flow of the selection steps.

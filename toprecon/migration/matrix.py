@@ -78,13 +78,17 @@ class MigrationMatrix:
             msg = "migration matrices: equally many replicas are required to add them"
             raise StudyError(msg)
         theirs = other.arrays
-        added: dict[str, Any] = {name: mine + theirs[name] for name, mine in self.arrays.items()}
+        added: dict[str, Any] = {
+            name: mine + theirs[name] for name, mine in self.arrays.items()
+        }
         return dataclasses.replace(self, **added)
 
     def scaled(self, factor: float) -> Self:
         """Return the matrix with every weight multiplied by a factor."""
         powers = {name: 2 if name.endswith("_variances") else 1 for name in self.arrays}
-        changed: dict[str, Any] = {n: a * factor ** powers[n] for n, a in self.arrays.items()}
+        changed: dict[str, Any] = {
+            n: a * factor ** powers[n] for n, a in self.arrays.items()
+        }
         return dataclasses.replace(self, **changed)
 
     def equals(self, other: Self) -> bool:
@@ -274,8 +278,8 @@ def accumulate(
     options = options or MigrationOptions()
     true_binning, reco_binning = options.true_binning, options.reco_binning
     n_true, n_reco = len(true_binning), len(reco_binning)
-    true = true_binning.digitise(table["cos_theta_true"])
-    reco = np.where(selected, reco_binning.digitise(table["cos_theta_reco"]), -1)
+    true = table.bins("cos_theta_true", true_binning).astype(np.int64)
+    reco = np.where(selected, table.bins("cos_theta_reco", reco_binning), -1)
     inside = table["is_signal"] & (true >= 0)
     # one block of cells: T rows of the matrix, then outside, then background;
     # the last column is for events that are not in a reconstructed bin

@@ -30,13 +30,12 @@ CHUNK_SIZE = 50_000
 """Events per chunk: the fastest size that keeps memory small."""
 
 Progress = Callable[[int, int], Any]
-StudyInput = (
     EventSource | EventTable | ak.Array | str | os.PathLike[str] | Sequence[Any]
 )
 
 
 def run_study(
-    source: StudyInput,
+    source: Any,
     plan: StudyPlan,
     *,
     layout: Any = None,

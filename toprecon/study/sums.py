@@ -120,11 +120,9 @@ def summarise(table: EventTable, plan: StudyPlan) -> StudySums:
     check_plan(table, plan)
     cutting = apply_cuts(table, plan)
     samples = {}
-    for row, sample in enumerate(table.samples):
-        mine = table["sample"] == row
-        whole = len(table.samples) == 1
-        part = table if whole else table.take(mine)
-        stage = cutting.stage if whole else cutting.stage[mine]
+    for rows, part in table.by_sample:
+        (sample,) = part.samples
+        stage = cutting.stage[rows]
         selected = stage == 0
         weight = part["weight"]
         passed = part["stage"] == 0
@@ -134,7 +132,7 @@ def summarise(table: EventTable, plan: StudyPlan) -> StudySums:
             asymmetry=accumulate_asymmetry(part, selected, weight),
             migration=accumulate_migration(part, selected, weight, plan.migration),
             statuses=np.bincount(part["status"][passed], minlength=len(Status)),
-            undefined=_undefined(part, stage, plan),
+            undefined=_undefined(table, rows, stage, plan),
         )
     return StudySums(plan.hash, samples)
 
@@ -195,14 +193,17 @@ def check_plan(table: EventTable, plan: StudyPlan) -> None:
 
 
 def _undefined(
-    part: EventTable, stage: NDArray[np.uint8], plan: StudyPlan
+    table: EventTable,
+    rows: NDArray[np.intp],
+    stage: NDArray[np.uint8],
+    plan: StudyPlan,
 ) -> dict[str, int]:
     """Rows lost at each cut because its observable is NaN."""
-    first = len(part.stages) + 2  # stage of the first cut, after the reconstruction
+    first = len(table.stages) + 2  # stage of the first cut, after the reconstruction
     return {
         cut.observable: int(
             np.count_nonzero(
-                (stage == first + position) & np.isnan(part[cut.observable])
+                np.isnan(table[cut.observable][rows[stage == first + position]])
             )
         )
         for position, cut in enumerate(plan.active_cuts)
