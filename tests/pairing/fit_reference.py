@@ -29,7 +29,7 @@ def momentum(x, velocity):
 
 def constraints(u, fit):
     """Seven constraints [GeV] and their derivatives by the scaled parameters."""
-    y, sigma, velocity, sqrt_s = fit
+    y, sigma, velocity, sqrt_s, *photon = fit
     n = len(y)
     x = y + sigma * u[: 3 * n].reshape(n, 3)
     p = np.zeros((6, 4))
@@ -45,7 +45,8 @@ def constraints(u, fit):
             slopes[15 + j, 5, 0] = 10.0 * k[j] / size
             slopes[15 + j, 5, 1 + j] = 10.0
     metric = np.array([1.0, -1.0, -1.0, -1.0])
-    values = list(p.sum(axis=0) - np.array([sqrt_s, 0, 0, 0]))
+    beam = sum(photon)  # energy of a photon, signed by its direction
+    values = list(p.sum(axis=0) - np.array([sqrt_s - abs(beam), 0, 0, -beam]))
     rows = list(slopes.sum(axis=1).T)
     for members in ((1, 2), (4, 5)):
         q = p[list(members)].sum(axis=0)
@@ -65,7 +66,7 @@ def constraints(u, fit):
 
 def start(fit):
     """Measured values, and the neutrino that balances their momenta."""
-    y, _, velocity, _ = fit
+    y, _, velocity, *_ = fit
     if len(y) == 6:
         return np.zeros(18)
     total = sum(momentum(a, v)[0] for a, v in zip(y, velocity, strict=True))
@@ -97,6 +98,23 @@ def slsqp(fit):
     )
     x = fit[0] + fit[1] * found.x[:n].reshape(-1, 3)
     return found.success, found.fun, x
+
+
+def slsqp_with_photon(fit, side, b):
+    """Chi-square and energy of a photon, by a search over its energy."""
+    from scipy.optimize import minimize_scalar
+    from scipy.special import erfinv
+
+    limit = fit[3] / 2
+
+    def chi2(k):
+        prior = 2 * erfinv((k / limit) ** b) ** 2
+        return slsqp((*fit, side * k))[1] + prior
+
+    found = minimize_scalar(
+        chi2, bounds=(1.0, 0.6 * limit), method="bounded", options={"xatol": 1e-3}
+    )
+    return found.fun, found.x
 
 
 def soft_least_squares(fit, widths):

@@ -8,6 +8,7 @@ from tests.pairing import fit_reference
 from tests.pairing.fit_toys import EXACT, measure, partons
 from toprecon.pairing.fit_errors import finish
 from toprecon.pairing.fit_model import Model
+from toprecon.pairing.fit_photon import radiator_exponent
 from toprecon.pairing.fit_solver import cholesky, solve, solve_lower
 
 CHANNELS = pytest.mark.parametrize("leptonic", [True, False])
@@ -88,6 +89,23 @@ def test_the_minimum_is_that_of_sequential_quadratic_programming(rng, leptonic):
         assert solution.chi2[i] == pytest.approx(chi2, abs=2e-4)
         shift = (solution.x[..., i] - x) / measured.sigma[..., i]
         assert np.abs(shift).max() < 2e-2
+
+
+@CHANNELS
+def test_the_minimum_with_a_photon_is_that_of_a_search_over_its_energy(rng, leptonic):
+    options = EXACT.replace(isr=True, tolerance=1e-5, chi2_tolerance=1e-6)
+    p, photon = partons(rng, 400, isr=True)
+    _, measured = measure(rng, p, leptonic=leptonic)
+    hard = np.flatnonzero(np.abs(photon) > 40)[:10]
+    assert len(hard) == 10
+    solution = solve(Model(options, leptonic), measured.take(hard))
+    for n, i in enumerate(hard):
+        chi2, energy = fit_reference.slsqp_with_photon(
+            fit_reference.one(measured, i), solution.side[n], radiator_exponent(500.0)
+        )
+        # stopping rules of both; the search is over an interval of 1 to 150 GeV
+        assert solution.chi2[n] == pytest.approx(chi2, abs=1e-3)
+        assert solution.photon[n] == pytest.approx(energy, abs=0.1)
 
 
 def test_soft_constraints_are_those_of_unconstrained_least_squares(rng):
@@ -176,6 +194,22 @@ def test_without_a_required_gain_the_lowest_chi_square_wins(rng):
     changed = gain.side != 0
     assert np.all(none.chi2[changed] - gain.chi2[changed] > 2.0)
     assert np.count_nonzero(lowest.side) > np.count_nonzero(gain.side)
+
+
+def test_fits_that_a_photon_cannot_improve_are_spared_the_attempt(rng):
+    p, _ = partons(rng, 300)
+    _, measured = measure(rng, p)
+    none = solve(Model(EXACT, True), measured)
+    photon = solve(Model(EXACT.replace(isr=True), True), measured)
+    spared = none.chi2 <= 2.0
+    assert 0.1 < spared.mean() < 0.5
+    np.testing.assert_array_equal(
+        photon.n_iterations[spared], none.n_iterations[spared]
+    )
+    np.testing.assert_array_equal(photon.chi2[spared], none.chi2[spared])
+    assert np.all(photon.n_iterations[~spared] > none.n_iterations[~spared])
+    nothing = solve(Model(EXACT.replace(isr=True, isr_gain=1e6), True), measured)
+    np.testing.assert_array_equal(nothing.chi2, none.chi2)
 
 
 def test_unusable_numbers_do_not_disturb_their_block(rng):

@@ -133,13 +133,13 @@ class FitOptions(Options):
     w_mass: float = option(W_MASS, "mass of the W", unit="GeV", above=0)
     top_mass: float = option(TOP_MASS, "mass of the top", unit="GeV", above=0)
     w_width: float = option(
-        5.0, "Gaussian softness of each W mass; 0 is exact", unit="GeV", low=0
+        8.0, "Gaussian softness of each W mass; 0 is exact", unit="GeV", low=0
     )
     top_width: float = option(
-        5.0, "Gaussian softness of each top mass; 0 is exact", unit="GeV", low=0
+        8.0, "Gaussian softness of each top mass; 0 is exact", unit="GeV", low=0
     )
     energy_width: float = option(
-        5.0, "Gaussian softness of the energy balance; 0 is exact", unit="GeV", low=0
+        8.0, "Gaussian softness of the energy balance; 0 is exact", unit="GeV", low=0
     )
     isr: bool = option(
         True,

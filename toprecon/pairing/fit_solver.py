@@ -66,18 +66,23 @@ def solve(model: Model, measured: Measured) -> Solution:
     """
     with np.errstate(all="ignore"):
         best = _solve_branch(model, measured, 0.0)
-        if not model.photon:
+        gain = model.options.isr_gain
+        # no photon can improve enough on a chi-square below the gain it needs
+        open_fits = np.flatnonzero(~best.converged | (best.chi2 > gain))
+        if not model.photon or not len(open_fits):
             return best
+        part = measured.take(open_fits)
         for side in (1.0, -1.0):
-            other = _solve_branch(model, measured, side)
-            needed = np.where(best.side == 0.0, model.options.isr_gain, 0.0)
+            other = _solve_branch(model, part, side)
+            best.n_iterations[open_fits] += other.n_iterations
+            needed = np.where(best.side[open_fits] == 0.0, gain, 0.0)
             better = other.converged & (
-                ~best.converged | (other.chi2 + needed < best.chi2)
+                ~best.converged[open_fits]
+                | (other.chi2 + needed < best.chi2[open_fits])
             )
             for name in ("x", "photon", "side", "chi2", "converged"):
                 mine, theirs = getattr(best, name), getattr(other, name)
-                mine[..., better] = theirs[..., better]
-            best.n_iterations += other.n_iterations
+                mine[..., open_fits[better]] = theirs[..., better]
     return best
 
 
