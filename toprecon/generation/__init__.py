@@ -11,16 +11,28 @@ from toprecon.generation.amplitudes import (
     coupling_weights,
     matrix_element,
 )
+from toprecon.generation.detector_options import DetectorOptions
 from toprecon.generation.generator import generate
-from toprecon.generation.options import Decays, Flavour, GenerationOptions
+from toprecon.generation.options import (
+    Decays,
+    Flavour,
+    GenerationOptions,
+    Process,
+    Simulation,
+)
+from toprecon.generation.particles import ParticleKind
 from toprecon.generation.rates import pair_cross_section_with_radiation
 from toprecon.generation.response_options import ResponseOptions
 
 __all__ = [
     "Decays",
+    "DetectorOptions",
     "Flavour",
     "GenerationOptions",
+    "ParticleKind",
+    "Process",
     "ResponseOptions",
+    "Simulation",
     "angle_weights",
     "coupling_weights",
     "generate",

@@ -24,7 +24,7 @@ class Stream(IntEnum):
 
     PARTONS = 0
     RESPONSE = 1
-    SHOWER = 2
+    SHOWERED_PARTONS = 2
 
 
 def check_request(n: Any, seed: Any, start: Any) -> None:

@@ -9,9 +9,27 @@ from pydantic import field_validator, model_validator
 
 from toprecon.constants import W_TO_HADRONS, W_TO_ONE_LEPTON
 from toprecon.events import Helicity
+from toprecon.generation.detector_options import DetectorOptions
 from toprecon.generation.response_options import ResponseOptions
 from toprecon.options import Options, option
 from toprecon.treelevel import ElectroweakInputs, FormFactors
+
+
+class Process(StrEnum):
+    """What the beams produce."""
+
+    TTBAR = "ttbar"
+    WW = "ww"
+    ZZ = "zz"
+    BB = "bb"
+    QQ = "qq"
+
+
+class Simulation(StrEnum):
+    """How events become jets: one per parton, or by shower, detector, clustering."""
+
+    PARTONS = "partons"
+    SHOWER = "shower"
 
 
 class Decays(StrEnum):
@@ -35,6 +53,12 @@ class GenerationOptions(Options):
     """What is generated: beams, decays, couplings, response of the detector."""
 
     name: str = option("", "name of the sample; made from the settings if empty")
+    process: Process = option(
+        Process.TTBAR, "top pairs, or a background made by Pythia 8 (unpolarised)"
+    )
+    simulation: Simulation = option(
+        Simulation.PARTONS, "one jet per quark (quick), or shower and jet clustering"
+    )
     sqrt_s: float = option(
         500.0, "collision energy", unit="GeV", low=350, high=20000, step=10
     )
@@ -66,7 +90,19 @@ class GenerationOptions(Options):
         None, "couplings of the top to photon and Z", factory=FormFactors
     )
     response: ResponseOptions = option(
-        None, "response of the detector", factory=ResponseOptions
+        None, "resolutions, tag rates, charge purities", factory=ResponseOptions
+    )
+    detector: DetectorOptions = option(
+        None, "detector behind the shower", factory=DetectorOptions
+    )
+    n_jets: int | None = option(
+        None, "jets per showered event; 6 if all-hadronic, else 4", low=2, high=12
+    )
+    keep_particles: bool = option(False, "store the particles of showered events")
+    preselect: bool = option(
+        True,
+        "of a background keep only events with a lepton and jets (or, for six jets, "
+        "with jets and no lepton)",
     )
 
     @field_validator("helicity", mode="before")
@@ -75,6 +111,26 @@ class GenerationOptions(Options):
         if isinstance(value, str) and value in Helicity.__members__:
             return Helicity[value]
         return value
+
+    @model_validator(mode="after")
+    def _background(self) -> Self:
+        if self.process is Process.TTBAR:
+            return self
+        if self.simulation is not Simulation.SHOWER:
+            msg = (
+                f"process {self.process.value!r} needs simulation 'shower'; got "
+                f"{self.simulation.value!r}"
+            )
+            raise ValueError(msg)
+        unpolarised = not (self.electron_polarisation or self.positron_polarisation)
+        if self.helicity is not Helicity.MIXED or not unpolarised:
+            msg = (
+                f"process {self.process.value!r} is unpolarised: helicity MIXED without "
+                "polarisations is required; the cross section of the sample is stated "
+                "per helicity"
+            )
+            raise ValueError(msg)
+        return self
 
     @model_validator(mode="after")
     def _consistent(self) -> Self:
@@ -123,7 +179,16 @@ class GenerationOptions(Options):
         """Name of the sample."""
         if self.name:
             return self.name
+        if self.process is not Process.TTBAR:
+            return f"{self.process.value}_{self.sqrt_s:g}"
         return f"ttbar_{self.decays.value}_{self.sqrt_s:g}_{self.helicity.name}"
+
+    @property
+    def jets_per_event(self) -> int:
+        """Number of jets that showered events are clustered into."""
+        if self.n_jets is not None:
+            return self.n_jets
+        return 6 if self.decays is Decays.ALL_HADRONIC else 4
 
     @property
     def branching_fraction(self) -> float:

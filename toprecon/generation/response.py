@@ -16,8 +16,8 @@ from toprecon.events import momenta
 from toprecon.generation.partons import Partons
 from toprecon.generation.response_options import ResponseOptions
 from toprecon.generation.tags import (
+    btag_score,
     charge_measurement,
-    draw_btag,
     electric_charge,
 )
 from toprecon.generation.taus import decay_taus
@@ -105,7 +105,7 @@ def _respond_jets(
 ) -> ak.Array:
     """Smear, tag and order the jets."""
     n, slots = codes.shape
-    noise = rng.standard_normal((3, n, slots))
+    noise = rng.standard_normal((6, n, slots))
     energy = np.maximum(p[0], 1e-3)
     resolution = np.hypot(
         options.jet_energy_stochastic / np.sqrt(energy), options.jet_energy_constant
@@ -116,12 +116,12 @@ def _respond_jets(
     smeared = smeared * scale
     charge = electric_charge(codes)
     columns = {
-        "btag": draw_btag(rng, codes, options),
+        "btag": btag_score(noise[3], codes, options),
         "track_charge": charge_measurement(
-            rng, charge, options.track_charge_purity, width=0.2
+            noise[4], charge, options.track_charge_purity, width=0.2
         ),
         "vertex_charge": charge_measurement(
-            rng,
+            noise[5],
             np.where(np.abs(codes) == 5, charge, 0.0),
             options.vertex_charge_purity,
             width=1.0,

@@ -15,15 +15,15 @@ SCORE_WIDTH = 2.0  # spread of the score on the logistic scale
 _CHARGES = {2: 2 / 3, 4: 2 / 3, 6: 2 / 3, 1: -1 / 3, 3: -1 / 3, 5: -1 / 3, 15: -1.0}
 
 
-def draw_btag(
-    rng: np.random.Generator, codes: NDArray[Any], options: ResponseOptions
+def btag_score(
+    normal: FloatArray, codes: NDArray[Any], options: ResponseOptions
 ) -> FloatArray:
-    """Draw the b score of jets from partons with given codes.
+    """Return the b score of jets from partons with given codes.
 
     Parameters
     ----------
-    rng : numpy.random.Generator
-        Random numbers.
+    normal : array
+        Standard normal random numbers.
     codes : array of int
         Codes of the partons; b and c count, all others are light.
     options : ResponseOptions
@@ -34,10 +34,9 @@ def draw_btag(
     array
         In (0, 1): the logistic function of a Gaussian, whose mean gives the share.
     """
-    normal = NormalDist()
     flavour = np.abs(codes)
     b, c, light = (
-        normal.inv_cdf(share)
+        NormalDist().inv_cdf(share)
         for share in (
             options.btag_efficiency_b,
             options.btag_efficiency_c,
@@ -45,19 +44,19 @@ def draw_btag(
         )
     )
     mean = np.where(flavour == 5, b, np.where(flavour == 4, c, light))
-    latent = SCORE_WIDTH * (mean + rng.standard_normal(codes.shape))
+    latent = SCORE_WIDTH * (mean + normal)
     return 1 / (1 + np.exp(-latent))
 
 
 def charge_measurement(
-    rng: np.random.Generator, charge: NDArray[Any], purity: float, *, width: float
+    normal: FloatArray, charge: NDArray[Any], purity: float, *, width: float
 ) -> FloatArray:
-    """Draw a measured charge whose sign is right with a given probability.
+    """Return a measured charge whose sign is right with a given probability.
 
     Parameters
     ----------
-    rng : numpy.random.Generator
-        Random numbers.
+    normal : array
+        Standard normal random numbers.
     charge : array
         True charge; its sign counts, and 0 gives no preference.
     purity : float
@@ -72,7 +71,7 @@ def charge_measurement(
     """
     # the inverse of the normal distribution is infinite at 1
     mean = NormalDist().inv_cdf(min(purity, 1 - 1e-12))
-    return width * (np.sign(charge) * mean + rng.standard_normal(charge.shape))
+    return width * (np.sign(charge) * mean + normal)
 
 
 def electric_charge(codes: NDArray[Any]) -> FloatArray:
