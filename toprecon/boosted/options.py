@@ -171,15 +171,17 @@ class ChargeOptions(Options):
     """Sign of all-hadronic pairs from a weighted sum of charges.
 
     The weights multiply the charges of the first fat jet minus those of the second.
+    The defaults were fitted to 2000 simulated pairs at 1.4 TeV; they depend on how well
+    charges are measured, so fit them again with ``calibrate_charge``.
     """
 
     kappa: float = option(
         0.3, "exponent of the energy share in the jet charges", low=0, high=2, step=0.05
     )
     vertex: float = option(-1.0, "weight of the vertex charge of the b jet")
-    b_charge: float = option(-1.0, "weight of the charge of the b jet")
-    w_charge: float = option(1.0, "weight of the charge of the rest of the fat jet")
-    lepton_charge: float = option(-1.0, "weight of the charge of leptons in the b jet")
+    b_charge: float = option(-0.35, "weight of the charge of the b jet")
+    w_charge: float = option(1.65, "weight of the charge of the rest of the fat jet")
+    lepton_charge: float = option(-0.55, "weight of the charge of leptons in the b jet")
 
 
 class BoostedOptions(Options):
@@ -209,7 +211,7 @@ class BoostedOptions(Options):
         low=0,
     )
     least_energy: float = option(
-        50.0, "least energy of a fat jet", unit="GeV", low=0, step=10
+        10.0, "least energy of a fat jet", unit="GeV", low=0, step=10
     )
     axis: Axis = option(Axis.GROOMED, "momentum taken as that of the top")
     substructure: SubstructureOptions = option(
