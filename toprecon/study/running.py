@@ -30,8 +30,6 @@ CHUNK_SIZE = 50_000
 """Events per chunk: the fastest size that keeps memory small."""
 
 Progress = Callable[[int, int], Any]
-    EventSource | EventTable | ak.Array | str | os.PathLike[str] | Sequence[Any]
-)
 
 
 def run_study(
