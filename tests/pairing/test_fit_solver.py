@@ -223,6 +223,19 @@ def test_unusable_numbers_do_not_disturb_their_block(rng):
     assert not together.converged[:2].any()
 
 
+def test_the_default_stopping_rule_is_good_to_a_thousandth(rng):
+    p, _ = partons(rng, 2000, 365.0, widths=True)
+    _, measured = measure(rng, p, 365.0)
+    loose = solve(Model(EXACT, True), measured)
+    tight = EXACT.replace(tolerance=1e-6, chi2_tolerance=1e-7, max_iterations=200)
+    tight = solve(Model(tight, True), measured)
+    both = loose.converged & tight.converged
+    assert both.mean() > 0.998
+    # linear convergence: the worst of 2 000 has about 20 times its last change left
+    assert np.quantile(np.abs(loose.chi2 - tight.chi2)[both], 0.99) < 1e-3
+    np.testing.assert_allclose(loose.chi2[both], tight.chi2[both], atol=0.05)
+
+
 def test_the_fit_stops_at_the_largest_number_of_steps(rng):
     p, _ = partons(rng, 100, widths=True)
     _, measured = measure(rng, p)
