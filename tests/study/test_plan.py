@@ -72,6 +72,14 @@ def test_cut_on_the_same_observable_is_replaced_in_place():
     assert [c.observable for c in plan.active_cuts] == ["pairing.w_mass"]
 
 
+def test_code_of_a_plan_makes_the_same_plan():
+    plan = StudyPlan().with_settings(
+        {"selection.btag_high": 0.7, "pairing.terms.2.on": True, "study.name": "x"}
+    )
+    plan = plan.with_cut("pairing.chi2", high=5).with_cut("pairing.gap", 1, on=False)
+    assert eval(plan.as_code(), {"StudyPlan": StudyPlan}) == plan
+
+
 def test_infinite_limits_mean_no_limit():
     cut = StudyPlan().with_cut("pairing.chi2", float("-inf"), float("inf")).cuts[0]
     assert cut.low is None

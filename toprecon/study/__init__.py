@@ -8,7 +8,16 @@ It re-exports what notebooks and the command line need from the steps.
 
 from __future__ import annotations
 
-from toprecon.events import Branch, Channel, EventTable, Helicity, PairingClass, Status
+from toprecon.events import (
+    Binning,
+    Branch,
+    Channel,
+    EventTable,
+    Helicity,
+    Observable,
+    PairingClass,
+    Status,
+)
 from toprecon.io import load_layout, open_events, write_events
 from toprecon.study.chunks import (
     check_references,
@@ -18,6 +27,7 @@ from toprecon.study.chunks import (
 )
 from toprecon.study.cutting import Cutting, apply_cuts, passes_cut
 from toprecon.study.handoff import HandOff, check_target, read_hand_off, write_hand_off
+from toprecon.study.live import LiveStudy
 from toprecon.study.plan import (
     OBSERVABLES,
     AngleOptions,
@@ -29,7 +39,7 @@ from toprecon.study.plan import (
     StudyPlan,
 )
 from toprecon.study.reconstruction import reconstruct
-from toprecon.study.report import result_mapping, result_text
+from toprecon.study.report import result_mapping, result_text, sentence_of
 from toprecon.study.result import CAUTIONS, BeamsResult, StudyResult, finish
 from toprecon.study.running import CHUNK_SIZE, run_study, summarise_chunk
 from toprecon.study.sums import StudySums, merge, summarise
@@ -42,6 +52,7 @@ __all__ = [
     "AngleOptions",
     "BeamsOptions",
     "BeamsResult",
+    "Binning",
     "Branch",
     "Channel",
     "CutOptions",
@@ -51,6 +62,8 @@ __all__ = [
     "Frame",
     "HandOff",
     "Helicity",
+    "LiveStudy",
+    "Observable",
     "PairingClass",
     "SampleFactors",
     "Status",
@@ -75,6 +88,7 @@ __all__ = [
     "result_text",
     "run_study",
     "sample_factors",
+    "sentence_of",
     "summarise",
     "summarise_chunk",
     "write_events",

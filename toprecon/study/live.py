@@ -294,8 +294,8 @@ class LiveStudy:
     def code(self) -> str:
         """Return the lines of Python that give the present result."""
         return (
-            "from toprecon import StudyPlan, run_study\n"
-            f"plan = StudyPlan.from_toml('''\n{self._plan.to_toml()}''')\n"
+            "from toprecon import StudyPlan, run_study\n\n"
+            f"plan = {self._plan.as_code()}\n"
             "result = run_study(source, plan)"
         )
 

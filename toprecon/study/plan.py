@@ -294,6 +294,24 @@ class StudyPlan(Options):
             cuts.append(new)
         return self.replace(cuts=tuple(cuts))
 
+    def as_code(self) -> str:
+        """Return a Python expression that makes this plan from the default one."""
+        text = "StudyPlan()"
+        changed = _changes(type(self)().to_mapping(), self.to_mapping())
+        cuts = changed.pop("cuts", None)
+        if changed:
+            lines = "".join(f"    {k!r}: {v!r},\n" for k, v in changed.items())
+            text += f".with_settings({{\n{lines}}})"
+        for cut in self.cuts if cuts is not None else ():
+            limits = "".join(
+                f", {name}={value:g}"
+                for name, value in (("low", cut.low), ("high", cut.high))
+                if value is not None
+            )
+            off = "" if cut.on else ", on=False"
+            text += f".with_cut({cut.observable!r}{limits}{off})"
+        return text
+
     @property
     def active_cuts(self) -> tuple[CutOptions, ...]:
         """Cuts that are switched on."""
@@ -326,6 +344,24 @@ OBSERVABLES: tuple[Observable, ...] = (*SELECTION_OBSERVABLES, *PAIRING_OBSERVAB
 def _hash(data: dict[str, Any]) -> str:
     """Hash of plain data, independent of the order of keys."""
     return hashlib.sha256(json.dumps(data, sort_keys=True).encode()).hexdigest()
+
+
+def _changes(old: Any, new: Any, path: str = "") -> dict[str, Any]:
+    """Find the settings, by path, that differ from the old ones."""
+    if old == new:
+        return {}
+    inside = f"{path}." if path else ""
+    if isinstance(old, dict) and isinstance(new, dict) and set(old) <= set(new):
+        out: dict[str, Any] = {}
+        for key in new:
+            out.update(_changes(old.get(key), new[key], f"{inside}{key}"))
+        return out
+    if isinstance(old, list) and isinstance(new, list) and 0 < len(old) == len(new):
+        out = {}
+        for index, (a, b) in enumerate(zip(old, new, strict=True)):
+            out.update(_changes(a, b, f"{inside}{index}"))
+        return out
+    return {path: new}
 
 
 def _toml_value(text: str) -> Any:

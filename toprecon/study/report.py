@@ -97,6 +97,32 @@ def result_text(result: StudyResult) -> str:
     return "\n".join(lines)
 
 
+def sentence_of(beams: BeamsResult) -> str:
+    """Return the outcome for one setting of the beams in a sentence or two.
+
+    Parameters
+    ----------
+    beams : BeamsResult
+        Results.
+
+    Returns
+    -------
+    str
+        Events selected, A_FB of the selected events generated and reconstructed, and
+        their difference.
+    """
+    a, flow = beams.asymmetry, beams.cut_flow
+    kind = "expected events" if beams.is_expected else "events"
+    return (
+        f"{flow.sums[-1]:,.0f} of {flow.sums[0]:,.0f} {kind} selected "
+        f"({100 * flow.efficiency[-1]:.1f} %). A_FB generated "
+        f"{a.generated_selected}, reconstructed {a.reconstructed}, "
+        f"shift of the signal {a.shift}; generated, all events {a.generated}. "
+        f"{CLASS_NAMES['correct'].capitalize()} pairing in {a.fraction_right} of the "
+        "matched events."
+    ).replace("+-", "±")
+
+
 def _number(value: float) -> float | None:
     """Return a number, or ``None`` if it is missing."""
     return float(value) if math.isfinite(value) else None
