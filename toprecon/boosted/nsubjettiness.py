@@ -13,8 +13,11 @@ from toprecon.jets import History, Sequence, cluster_history
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
-_PASSES = 12
-"""Passes of the minimisation; the value changes by less than 1e-3 after ten."""
+_PASSES = 200
+"""Most passes of the minimisation."""
+
+_ACCURACY = 1e-4
+"""The minimisation ends when no value falls by more than this share in a pass."""
 
 _SMALLEST_ANGLE = 1e-6
 """Guards the weight theta^(beta - 2) of a particle that lies on an axis [rad]."""
@@ -75,13 +78,17 @@ def n_subjettiness(
         directions = np.nan_to_num(jets[1:] / size)
     owner = np.repeat(np.arange(len(counts)), counts)
     unit = unit_vectors(p4)
-    tau = spread(p4[0], angles_to(unit, directions, nodes, owner), owner, beta)
-    if axes is SubjetAxes.MINIMISED:
+    theta = angles_to(unit, directions, nodes, owner)
+    tau = spread(p4[0], theta, owner, beta)
+    if axes == SubjetAxes.MINIMISED:
         for _ in range(_PASSES):
-            theta = angles_to(unit, directions, nodes, owner)
             directions = _moved(p4[0], unit, theta, directions, owner, beta)
             theta = angles_to(unit, directions, nodes, owner)
-            tau = np.fmin(tau, spread(p4[0], theta, owner, beta))
+            lower = np.fmin(tau, spread(p4[0], theta, owner, beta))
+            falls = lower < (1.0 - _ACCURACY) * tau
+            tau = lower
+            if not falls.any():
+                break
     energy = np.bincount(owner, weights=p4[0], minlength=len(counts))
     full = np.full(len(counts), np.nan)
     full[: len(tau)] = tau

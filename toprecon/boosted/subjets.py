@@ -101,9 +101,9 @@ def w_candidate(
     """
     sums = np.stack([subjets[:, :, i] + subjets[:, :, j] for i, j in _PAIRS])
     masses = np.stack([mass(p) for p in sums])
-    if choice is WChoice.CLOSEST:
+    if choice == WChoice.CLOSEST:
         cost = np.abs(masses - w_mass)
-    elif choice is WChoice.SMALLEST:
+    elif choice == WChoice.SMALLEST:
         cost = masses
     else:
         cost = np.stack(

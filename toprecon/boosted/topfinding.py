@@ -67,6 +67,7 @@ def find_tops(
         If the events have no particles.
     """
     options = options or BoostedOptions()
+    channel = Channel(channel)
     if "particles" not in events.fields or len(events) <= _BLOCK:
         return _find_block(events, options, channel)
     parts = [
@@ -101,6 +102,7 @@ def fat_jet_table(
     dict of array, shape (F,)
         Values by the names of the observables without ``boosted.``, and ``event``.
     """
+    channel = Channel(channel)
     tops = find_tops(events, options, channel=channel)
     names = [name.removeprefix("boosted.") for name in tops.observables.fields]
     columns = {name: ak.to_numpy(tops.observables[f"boosted.{name}"]) for name in names}

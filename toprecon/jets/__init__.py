@@ -17,6 +17,7 @@ from toprecon.jets.history import (
     durham_distance,
     one_minus_cosine,
 )
+from toprecon.jets.isolation import relative_isolation
 
 __all__ = [
     "EVERYTHING",
@@ -30,4 +31,5 @@ __all__ = [
     "durham_distance",
     "jet_charge",
     "one_minus_cosine",
+    "relative_isolation",
 ]

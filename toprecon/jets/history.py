@@ -299,6 +299,7 @@ def cluster_history(
     filled = counts[counts > 0]
     if len(filled) == 0:
         return History(counts, offsets, left, right, parent, np.zeros((4, 0)))
+    sequence = Sequence(sequence)
     radius = None if sequence is Sequence.DURHAM else EVERYTHING
     power = _POWER.get(sequence, 1.0)
     # both are kept until the results are read: FastJet holds references to them

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from toprecon.kinematics import momentum
 
 
-def isolation(
+def relative_isolation(
     p: NDArray[np.float64],
     counts: Any,
     candidates: NDArray[np.bool_],
