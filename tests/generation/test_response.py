@@ -9,7 +9,7 @@ import pytest
 from toprecon.events import components
 from toprecon.generation import GenerationOptions, generate
 from toprecon.generation.response import tilt
-from toprecon.generation.tags import charge_measurement, btag_score, electric_charge
+from toprecon.generation.tags import btag_score, charge_measurement, electric_charge
 from toprecon.generation.taus import decay_taus
 from toprecon.kinematics import angle, momentum
 

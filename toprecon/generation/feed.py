@@ -123,15 +123,19 @@ def with_masses(partons: Partons) -> dict[str, FloatArray]:
     momenta = dict(partons.momenta)
     for _, w, _, (up, down) in SIDES:
         first, second = _masses_of(partons.pdg[up]), _masses_of(partons.pdg[down])
-        if not (first.any() or second.any()):
-            continue
-        parent = momenta[w]
-        in_w = to_rest_frame(momenta[down], parent)
+        # only these events are touched: the bits of the others must not depend on
+        # their company
+        rows = np.flatnonzero((first > 0) | (second > 0))
+        parent = momenta[w][:, rows]
+        in_w = to_rest_frame(momenta[down][:, rows], parent)
         direction = in_w[1:] / np.sqrt(np.sum(in_w[1:] ** 2, axis=0))
-        size = decay_momentum(mass(parent), first, second)
-        moved = np.concatenate([np.hypot(size, second)[None], size * direction])
-        momenta[down] = from_rest_frame(moved, parent)
-        momenta[up] = parent - momenta[down]
+        size = decay_momentum(mass(parent), first[rows], second[rows])
+        energy = np.hypot(size, second[rows])
+        moved = np.concatenate([energy[None], size * direction])
+        lighter = from_rest_frame(moved, parent)
+        momenta[down], momenta[up] = momenta[down].copy(), momenta[up].copy()
+        momenta[down][:, rows] = lighter
+        momenta[up][:, rows] = parent - lighter
     return momenta
 
 

@@ -80,7 +80,14 @@ def find_jets(
     global_index = np.where(inside, starts[measured.event] + first.jet_index, 0)
     factor = np.ones(len(inside))
     factor[inside] = scale[global_index[inside]]
-    p4, particle_p4 = first.p4 * scale, measured.p4 * factor
+    particle_p4 = measured.p4 * factor
+    # summed here in the order of the particles: the same bits in any company
+    p4: FloatArray = np.stack(
+        [
+            np.bincount(global_index[inside], weights=c[inside], minlength=len(scale))
+            for c in particle_p4
+        ]
+    )
     order = np.lexsort((-p4[0], jet_event))
     rank = np.empty(len(order), dtype=np.int64)
     rank[order] = np.arange(len(order))
