@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import argparse
+import contextlib
 import json
+import multiprocessing
 import os
 import subprocess
 import sys
@@ -13,7 +15,14 @@ from pathlib import Path
 from typing import Any
 
 from toprecon.errors import InputError, MissingPackageError, OptionError
-from toprecon.study import StudyPlan, check_target, result_text, run_study
+from toprecon.study import (
+    Recipe,
+    StudyPlan,
+    check_target,
+    produce,
+    result_text,
+    run_study,
+)
 
 FIRST_NOTEBOOK = Path("notebooks") / "01_first_look.ipynb"
 
@@ -30,15 +39,7 @@ def study(options: argparse.Namespace) -> int:
     -------
     int
         0.
-
-    Raises
-    ------
-    OptionError
-        If a setting or the number of workers is wrong.
     """
-    if options.workers < 1:
-        msg = f"--workers: must be >= 1; got {options.workers}"
-        raise OptionError(msg)
     plan = StudyPlan.load(options.plan) if options.plan else StudyPlan()
     plan = plan.with_settings(dict(_setting(text) for text in options.settings))
     if options.out:
@@ -48,11 +49,8 @@ def study(options: argparse.Namespace) -> int:
         "parts": options.parts,
         "progress": _progress(),
     }
-    if options.workers == 1:
-        result = run_study(options.files, plan, **arguments)
-    else:
-        with ProcessPoolExecutor(options.workers) as executor:
-            result = run_study(options.files, plan, executor=executor, **arguments)
+    with _executor(options.workers) as executor:
+        result = run_study(options.files, plan, executor=executor, **arguments)
     if options.out:
         folder = result.hand_off(options.out, replace=options.replace)
         print(f"hand-off written to {folder}", file=sys.stderr)
@@ -60,6 +58,44 @@ def study(options: argparse.Namespace) -> int:
         print(json.dumps(result.to_mapping(), allow_nan=False))
     else:
         print(result_text(result))
+    return 0
+
+
+def generate(options: argparse.Namespace) -> int:
+    """Make the samples of a recipe.
+
+    Parameters
+    ----------
+    options : Namespace
+        Arguments of ``toprecon generate``.
+
+    Returns
+    -------
+    int
+        0.
+    """
+    recipe = Recipe.load(options.recipe)
+    terminal = sys.stderr.isatty()
+
+    def show(name: str, done: int, total: int) -> None:
+        if terminal or done == total:
+            end = "\n" if done == total else ""
+            text = f"\r{name}: {done} of {total} events"
+            print(text, end=end, file=sys.stderr, flush=True)
+
+    with _executor(options.workers) as executor:
+        samples = produce(
+            recipe,
+            options.out,
+            part_size=options.part_size,
+            progress=show,
+            executor=executor,
+        )
+    for sample in samples:
+        print(
+            f"{sample.path}  {sample.stored} of {sample.generated} events  "
+            f"content {sample.checksum[:16]}"
+        )
     return 0
 
 
@@ -119,6 +155,18 @@ def lab(options: argparse.Namespace) -> int:
     if getattr(os, "geteuid", lambda: 1)() == 0:  # the server refuses root otherwise
         command.append("--allow-root")
     return subprocess.run(command, check=False).returncode
+
+
+def _executor(workers: int) -> Any:
+    """Context of an executor for several processes, or of none for one process."""
+    if workers < 1:
+        msg = f"--workers: must be >= 1; got {workers}"
+        raise OptionError(msg)
+    if workers == 1:
+        return contextlib.nullcontext()
+    # spawned, not forked: threads and libraries start clean in each process
+    context = multiprocessing.get_context("spawn")
+    return ProcessPoolExecutor(workers, mp_context=context)
 
 
 def _clone() -> Path | None:

@@ -6,6 +6,7 @@ import argparse
 import sys
 import warnings
 from collections.abc import Sequence
+from typing import Any
 
 from toprecon import __version__
 from toprecon.cli import commands
@@ -87,6 +88,19 @@ def parser() -> argparse.ArgumentParser:
     )
     study.set_defaults(command=commands.study)
 
+    generate = subcommands.add_parser(
+        "generate", help="make event samples from a recipe; goes on where it stopped"
+    )
+    generate.add_argument("recipe", metavar="RECIPE", help="recipe (TOML)")
+    generate.add_argument("--out", metavar="DIR", required=True, help="folder to fill")
+    generate.add_argument(
+        "--part-size", type=int, default=2000, help="events made at a time"
+    )
+    generate.add_argument(
+        "--workers", type=int, default=1, help="processes that work at once"
+    )
+    generate.set_defaults(command=commands.generate)
+
     plan = subcommands.add_parser("plan", help="print the default plan, to start from")
     plan.set_defaults(command=commands.plan)
 
@@ -102,6 +116,6 @@ def parser() -> argparse.ArgumentParser:
     return top
 
 
-def _show_warning(message: Warning | str, *_: object) -> None:
+def _show_warning(message: Any, *_: Any, **__: Any) -> None:
     """Print a warning as one line."""
     print(f"toprecon: {message}", file=sys.stderr)

@@ -38,6 +38,7 @@ from toprecon.study.plan import (
     StudyOptions,
     StudyPlan,
 )
+from toprecon.study.production import Produced, Recipe, content_checksum, produce
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.report import result_mapping, result_text, sentence_of
 from toprecon.study.result import CAUTIONS, BeamsResult, StudyResult, finish
@@ -65,6 +66,8 @@ __all__ = [
     "LiveStudy",
     "Observable",
     "PairingClass",
+    "Produced",
+    "Recipe",
     "SampleFactors",
     "Status",
     "StudyOptions",
@@ -74,12 +77,14 @@ __all__ = [
     "apply_cuts",
     "check_references",
     "check_target",
+    "content_checksum",
     "finish",
     "load_layout",
     "merge",
     "open_events",
     "part_path",
     "passes_cut",
+    "produce",
     "read_hand_off",
     "reconstruct",
     "reconstruct_chunk",
