@@ -21,7 +21,7 @@ from toprecon.generation.backgrounds import (
     left_handed_share,
 )
 from toprecon.generation.generator import SHOWER_BLOCK_SIZE
-from toprecon.kinematics import angle
+from toprecon.kinematics import angle, to_rest_frame
 
 require("pythia8mc")
 SHOWER = GenerationOptions(simulation="shower")
@@ -99,6 +99,21 @@ def test_the_isolated_lepton_is_the_one_from_the_w(events):
     assert np.mean(charge[near] == np.where(plus, 1, -1)[one][near]) > 0.99
     ratio = found[0][near] / lepton[0][one][near]
     assert np.median(ratio) == pytest.approx(1.0, abs=0.01)
+
+
+def test_spin_of_the_tops_is_seen_in_the_leptons_found(events):
+    # a lepton of a top analyses its spin fully: 3 <cos> is the mean helicity, -0.51
+    # for e-L beams; isolation favours hard leptons a little
+    truth = events.truth
+    plus = np.abs(ak.to_numpy(truth.w_plus_down.pdg)) > 10
+    one = ak.to_numpy(ak.num(events.leptons)) == 1
+    lepton = components(ak.flatten(events.leptons[one]))
+    top = np.where(plus, components(truth.top), components(truth.antitop))[:, one]
+    moved = to_rest_frame(lepton, top)[1:]
+    cosine = np.sum(moved * top[1:], axis=0)
+    cosine /= np.sqrt(np.sum(moved**2, axis=0) * np.sum(top[1:] ** 2, axis=0))
+    # 5 standard deviations of 1 100 leptons: 0.25
+    assert 3 * np.mean(cosine) == pytest.approx(-0.51, abs=0.25)
 
 
 @pytest.mark.slow

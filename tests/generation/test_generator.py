@@ -13,7 +13,7 @@ from toprecon.events import (
     validate_events,
     with_samples,
 )
-from toprecon.generation import GenerationOptions, generate
+from toprecon.generation import GenerationOptions, describe, generate
 from toprecon.generation.generator import BLOCK_SIZE
 from toprecon.kinematics import mass
 
@@ -114,3 +114,23 @@ def test_no_events_are_events():
 def test_wrong_requests_are_refused(arguments, message):
     with pytest.raises(ValueError, match=message):
         generate(**arguments)
+
+
+def test_mixed_beams_have_the_mixed_cross_section():
+    beams = {"electron_polarisation": -0.8, "positron_polarisation": 0.3}
+    options = GenerationOptions(helicity="MIXED", **beams)
+    events = generate(10, options, seed=1)
+    (sample,) = samples_of(events)
+    expected = 0.585 * sample.cross_section_lr + 0.035 * sample.cross_section_rl
+    assert sample.cross_section == pytest.approx(expected)
+    assert sample.electron_polarisation == -0.8
+    assert np.all(ak.to_numpy(events.helicity) == 0)
+
+
+def test_chunks_are_described_together():
+    options = GenerationOptions()
+    whole = describe(options, 10_000)
+    (part,) = samples_of(generate(100, options))
+    assert whole.generated == whole.entries == whole.normalisation == 10_000
+    assert whole.cross_section_lr == part.cross_section_lr
+    assert whole.name == part.name

@@ -12,7 +12,7 @@ from toprecon.generation.amplitudes import (
     matrix_element,
 )
 from toprecon.generation.detector_options import DetectorOptions
-from toprecon.generation.generator import generate
+from toprecon.generation.generator import describe, generate
 from toprecon.generation.options import (
     Decays,
     Flavour,
@@ -35,6 +35,7 @@ __all__ = [
     "Simulation",
     "angle_weights",
     "coupling_weights",
+    "describe",
     "generate",
     "matrix_element",
     "pair_cross_section_with_radiation",

@@ -93,7 +93,34 @@ def generate(
     wanted = list(blocks_of(start, n, size)) or [(0, slice(0, 0))]
     parts = [make(_Block(options, seed, number, rows)) for number, rows in wanted]
     events = concatenate_events(parts) if len(parts) > 1 else parts[0]
-    return with_samples(events, (_description(options, n, events),))
+    return with_samples(events, (describe(options, n, entries=len(events)),))
+
+
+def describe(
+    options: GenerationOptions, n: int, *, entries: int | None = None
+) -> Sample:
+    """Return the description of a sample, also of one generated in chunks.
+
+    Parameters
+    ----------
+    options : GenerationOptions
+        Settings of the sample.
+    n : int
+        Events generated in all chunks together; for a background, collisions.
+    entries : int, optional
+        Events kept; n if absent, which is right for the signal.
+
+    Returns
+    -------
+    Sample
+        With cross sections [fb] that include the branching fraction of the decays.
+    """
+    kept = n if entries is None else entries
+    if options.process is Process.TTBAR:
+        description = describe_sample(options, n)
+    else:
+        description = describe_background(options, n)
+    return description.replace(entries=kept, sum_of_weights=float(kept))
 
 
 def random_label(options: GenerationOptions) -> str:
@@ -167,15 +194,6 @@ def _assemble(
         "id": ids,
     }
     return make_events(fields, ())
-
-
-def _description(options: GenerationOptions, n: int, events: ak.Array) -> Sample:
-    """Return the description of the sample."""
-    if options.process is Process.TTBAR:
-        return describe_sample(options, n)
-    kept = len(events)
-    description = describe_background(options, n)
-    return description.replace(entries=kept, sum_of_weights=float(kept))
 
 
 def truth_record(partons: Partons) -> ak.Array:

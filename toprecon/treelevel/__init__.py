@@ -30,6 +30,11 @@ from toprecon.treelevel.production import (
     polarised_terms,
     velocity,
 )
+from toprecon.treelevel.radiation import (
+    mean_kept_fraction,
+    radiation_exponent,
+    structure_function,
+)
 
 __all__ = [
     "AngularTerms",
@@ -48,8 +53,11 @@ __all__ = [
     "helicity_angle_density",
     "largest_lepton_b_mass",
     "mean_helicity",
+    "mean_kept_fraction",
     "mean_lepton_energy",
     "polarised_terms",
+    "radiation_exponent",
+    "structure_function",
     "top_width",
     "velocity",
     "vertex",
