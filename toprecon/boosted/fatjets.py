@@ -174,7 +174,8 @@ def thrust_hemispheres(p4: FloatArray, counts: IntArray, start: Jets) -> Jets:
     """Divide every event by the plane across its thrust axis.
 
     Starting from the axis of two jets, the axis becomes the sum of p_i sign(p_i . axis)
-    until no particle changes sides: a maximum of the thrust sum |p_i . axis|.
+    until no particle changes sides. The thrust sum of |p_i . axis| grows in every step,
+    so the end is a local maximum; for events of two jets it is the thrust axis.
 
     Parameters
     ----------

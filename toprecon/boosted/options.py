@@ -65,14 +65,14 @@ class SubstructureOptions(Options):
     """Grooming and the measures of substructure."""
 
     z_cut: float = option(
-        0.05,
+        0.1,
         "soft drop: least energy share of the softer branch at the angle R_0; 0 is off",
         low=0,
         high=0.5,
         step=0.01,
     )
     beta: float = option(
-        1.0, "soft drop: exponent of the angle", low=-2, high=5, step=0.1
+        2.0, "soft drop: exponent of the angle", low=-2, high=5, step=0.1
     )
     radius: float = option(
         math.pi / 2,
