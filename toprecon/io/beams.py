@@ -12,8 +12,11 @@ import math
 
 import numpy as np
 
+from toprecon.io.generated import GeneratedParticles
 from toprecon.io.raw import FloatArray, RawEvents
-from toprecon.kinematics import boost
+from toprecon.kinematics import boost, mass
+
+_BEAM_ENERGY = 10.0  # GeV, below it an electron without parents is no beam particle
 
 
 @dataclasses.dataclass(frozen=True)
@@ -65,6 +68,85 @@ def to_electron_frame(events: RawEvents, frame: BeamFrame) -> None:
         objects.p = frame.to_electron_frame(objects.p)
     if events.missing is not None:
         events.missing = frame.to_electron_frame(events.missing)
+    if events.visible is not None:
+        events.visible = frame.to_electron_frame(events.visible)
     if events.truth is not None:
         for name, p in events.truth.p.items():
             events.truth.p[name] = frame.to_electron_frame(p)
+
+
+def complete_missing(events: RawEvents) -> None:
+    """Compute a missing momentum that is not stored, in place.
+
+    It is the initial state, at rest with the nominal energy, less all particles; where
+    the nominal energy is not known its energy is taken as its momentum.
+    """
+    if events.missing is not None or events.visible is None:
+        return
+    visible = events.visible
+    size = np.sqrt(visible[1] ** 2 + visible[2] ** 2 + visible[3] ** 2)
+    energy = events.headers.sqrt_s - visible[0]
+    events.missing = np.stack(
+        [np.where(np.isnan(energy), size, energy), *(-visible[1:])]
+    )
+
+
+def beam_particles(
+    particles: GeneratedParticles,
+) -> tuple[FloatArray, FloatArray] | None:
+    """Return the momenta of electron and positron beam, of events that have both.
+
+    Parameters
+    ----------
+    particles : GeneratedParticles
+        Generated particles; the beams are the first electron and positron without
+        parents and on opposite sides.
+
+    Returns
+    -------
+    electron, positron : array, shape (4, n)
+        E, px, py, pz [GeV]; None instead if no event has both.
+    """
+    has_parent = np.zeros(len(particles.pdg), dtype=bool)
+    has_parent[particles.daughter] = True
+    event = particles.event
+    first = []
+    for code in (11, -11):
+        mask = (particles.pdg == code) & ~has_parent & (particles.p[0] > _BEAM_ENERGY)
+        where = np.full(len(particles.counts), -1, dtype=np.int64)
+        found = np.flatnonzero(mask)[::-1]
+        where[event[found]] = found
+        first.append(where)
+    both = (first[0] >= 0) & (first[1] >= 0)
+    electron, positron = (particles.p[:, where[both]] for where in first)
+    # two leptons on the same side are decay products without links, no beams
+    opposite = electron[3] * positron[3] < 0
+    if not opposite.any():
+        return None
+    return electron[:, opposite], positron[:, opposite]
+
+
+def frame_of(
+    beams: tuple[FloatArray, FloatArray] | None,
+) -> tuple[BeamFrame, float] | None:
+    """Return how beams lie and their collision energy [GeV], as medians.
+
+    Parameters
+    ----------
+    beams : arrays of shape (4, n), or None
+        Electrons and positrons.
+
+    Returns
+    -------
+    BeamFrame and float, or None
+        None without beams.
+    """
+    if beams is None:
+        return None
+    electron, positron = beams
+    total = electron + positron
+    slope = float(np.median(total[1] / total[0]))
+    # below 0.1 mrad it is the spread of the beams, not a crossing angle
+    angle = 2 * math.asin(slope) if abs(slope) > 1e-4 else 0.0
+    flipped = bool(np.median(electron[3]) < 0)
+    return BeamFrame(flipped, angle), float(np.median(mass(total)))

@@ -7,7 +7,11 @@ import os
 from pathlib import Path
 
 from toprecon.errors import InputError, UnknownFormatError
+from toprecon.io.edm4hep_collections import is_edm4hep
+from toprecon.io.edm4hep_reader import Edm4hepReader
+from toprecon.io.guess import guess_layout
 from toprecon.io.layout import FileLayout, Format, load_layout
+from toprecon.io.les_houches import LesHouchesReader
 from toprecon.io.mapping import ColumnReader
 from toprecon.io.own_layout import (
     SAMPLES_KEY,
@@ -15,11 +19,13 @@ from toprecon.io.own_layout import (
     own_optional_fields,
     parse_samples,
 )
+from toprecon.io.parquet_files import ParquetColumns
 from toprecon.io.raw import Reader
 from toprecon.io.root_columns import RootColumns
 
 ROOT_MAGIC = b"root"
 PARQUET_MAGIC = b"PAR1"
+LES_HOUCHES_MARK = b"<LesHouchesEvents"
 
 
 def as_layout(layout: FileLayout | str | os.PathLike[str] | None) -> FileLayout | None:
@@ -101,6 +107,11 @@ def open_reader(
     head = first_bytes(path)
     if head[:4] == ROOT_MAGIC:
         return _open_root(path, tree, layout)
+    if head[:4] == PARQUET_MAGIC:
+        return _open_parquet(path, layout)
+    if LES_HOUCHES_MARK in head:
+        layout = layout or FileLayout(name="Les Houches", format=Format.LES_HOUCHES)
+        return LesHouchesReader(path), layout
     what = "the file is empty" if not head else f"its first bytes are {head[:8]!r}"
     msg = (
         f"{path}: a ROOT, Parquet or Les Houches file is required, but {what}; check "
@@ -116,6 +127,10 @@ def _open_root(
     wanted = tree or (layout.tree if layout is not None else "")
     columns = RootColumns(path, wanted)
     try:
+        if layout is None and is_edm4hep(columns.types):
+            layout = FileLayout(name="EDM4hep", format=Format.EDM4HEP)
+        if layout is not None and layout.format is Format.EDM4HEP:
+            return _edm4hep(columns, layout), layout
         if layout is None:
             return _recognised(columns)
         return ColumnReader(columns, layout), layout
@@ -124,18 +139,51 @@ def _open_root(
         raise
 
 
-def _recognised(columns: RootColumns) -> tuple[Reader, FileLayout]:
-    """Recognise the layout of a ROOT file."""
+def _edm4hep(columns: RootColumns, layout: FileLayout) -> Reader:
+    """Read a ROOT file as EDM4hep."""
+    if not is_edm4hep(columns.types):
+        msg = (
+            f"{columns.path}: collections of EDM4hep are required in tree "
+            f"{columns.tree!r}, but none is known by its members"
+        )
+        raise UnknownFormatError(msg)
+    return Edm4hepReader(columns, layout, columns.collection_ids())
+
+
+def _open_parquet(path: str, layout: FileLayout | None) -> tuple[Reader, FileLayout]:
+    """Open a Parquet file as columns."""
+    columns = ParquetColumns(path)
+    try:
+        if layout is None:
+            return _recognised(columns)
+        return ColumnReader(columns, layout), layout
+    except BaseException:
+        columns.close()
+        raise
+
+
+def _recognised(columns: RootColumns | ParquetColumns) -> tuple[Reader, FileLayout]:
+    """Recognise the layout of a file of columns: our own, or by usual names."""
     text = columns.text(SAMPLES_KEY)
     if text:
-        layout = own_layout("_", own_optional_fields(columns.types))
+        separator = "." if isinstance(columns, ParquetColumns) else "_"
+        fields = own_optional_fields(columns.types, separator)
+        layout = own_layout(separator, fields)
         samples = parse_samples(text, where=columns.path)
         return ColumnReader(columns, layout, samples), layout
-    msg = (
-        f"{columns.path}: its columns are not known; describe them in a layout "
-        "(toprecon describe proposes one) and give it as layout=..."
+    guess = guess_layout(columns)
+    if guess.layout is None:
+        msg = (
+            f"{columns.path}: jets are required, but no columns for them are known by "
+            "their names; describe the columns in a layout (toprecon describe lists "
+            "them) and give it as layout=..."
+        )
+        raise UnknownFormatError(msg)
+    reader = ColumnReader(columns, guess.layout)
+    reader.notes.append(
+        "columns were understood by their names; check with toprecon describe"
     )
-    raise UnknownFormatError(msg)
+    return reader, guess.layout
 
 
 __all__ = ["Format", "as_layout", "first_bytes", "open_reader"]

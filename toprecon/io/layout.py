@@ -428,6 +428,12 @@ def read_toml(path: Path, *, what: str) -> dict[str, Any]:
 def _without_defaults(layout: FileLayout) -> dict[str, Any]:
     """Plain data without the settings that are at their default."""
     data = layout.model_dump(mode="json", exclude_none=True, exclude_defaults=True)
+    event = {
+        name: value
+        for name, value in data.get("event", {}).items()
+        if (name, value) not in {("weight", 1.0), ("helicity", 0.0)}
+    }
+    data = {k: v for k, v in {**data, "event": event}.items() if v != {}}
     for name in ("jets", "leptons", "particles", "photons"):
         if len(data.get(name, ())) == 1:
             data[name] = data[name][0]

@@ -56,6 +56,7 @@ class ColumnReader:
         self._columns = columns
         self.samples = samples
         self.n_entries = columns.n_entries
+        self.tree = getattr(columns, "tree", "")
         self.notes: list[str] = []
         self.warnings: list[str] = []
         self.layout = layout
@@ -441,3 +442,40 @@ def _header_branches(layout: FileLayout) -> set[str]:
     names = {event.id, event.run, event.number, event.sample}
     names |= {s.branch for s in (event.weight, event.helicity, event.sqrt_s) if s}
     return names - {""}
+
+
+def mapped_columns(layout: FileLayout) -> dict[str, str]:
+    """Return where every quantity comes from.
+
+    Parameters
+    ----------
+    layout : FileLayout
+        Layout of columns.
+
+    Returns
+    -------
+    dict
+        Quantity of Events -> column; constants are left out.
+    """
+    out: dict[str, str] = {}
+    for name in _OBJECTS:
+        for table in getattr(layout, name):
+            for key, source in table.sources().items():
+                if source.branch:
+                    out.setdefault(f"{name}.{key}", source.branch)
+    parts: dict[str, Any] = {"missing": layout.missing}
+    if layout.truth is not None:
+        parts |= {f"truth.{name}": table for name, table in layout.truth.momenta()}
+        if layout.truth.sqrt_s_prime is not None:
+            out["truth.sqrt_s_prime"] = layout.truth.sqrt_s_prime.branch
+    for name, part in parts.items():
+        if part is not None:
+            for key, source in part.sources().items():
+                out[f"{name}.{key}"] = source.branch
+    event = layout.event
+    named = {name: getattr(event, name) for name in ("id", "run", "number", "sample")}
+    for name in ("weight", "helicity", "sqrt_s"):
+        source = getattr(event, name)
+        named[name] = source.branch if source is not None else ""
+    out |= {f"event.{name}": branch for name, branch in named.items()}
+    return {name: branch for name, branch in out.items() if branch}

@@ -140,13 +140,18 @@ class RawTruth:
 
 @dataclasses.dataclass
 class RawEvents:
-    """One range of entries."""
+    """One range of entries.
+
+    ``visible``, the summed momentum of all particles, stands in for a missing momentum
+    that is not stored: it is the initial state less that.
+    """
 
     headers: RawHeaders
     objects: dict[str, RawObjects]
     missing: FloatArray | None
     truth: RawTruth | None
     problems: dict[Reason, NDArray[np.bool_]]
+    visible: FloatArray | None = None
 
     def __len__(self) -> int:
         return len(self.headers)

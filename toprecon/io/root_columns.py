@@ -10,6 +10,7 @@ import numpy as np
 
 from toprecon.errors import InputError, UnknownFormatError
 from toprecon.io.columns import Column, as_column
+from toprecon.io.edm4hep_collections import stored_ids
 
 USUAL_TREE = "events"
 
@@ -240,6 +241,10 @@ class RootColumns:
         if key not in self._directory:
             return ""
         return str(self._directory[key])
+
+    def collection_ids(self) -> dict[str, int]:
+        """Return the numbers of EDM4hep collections that the file stores, by name."""
+        return stored_ids(self._directory)
 
     def close(self) -> None:
         """Close the file."""
