@@ -26,7 +26,7 @@ from pydantic import field_validator
 
 from toprecon.errors import InputError, OptionError, StudyError
 from toprecon.events import concatenate_events, samples_of, with_samples
-from toprecon.generation import GenerationOptions, generate
+from toprecon.generation import GenerationOptions, describe, generate
 from toprecon.io import open_events, write_events
 from toprecon.kinematics import mass, momentum
 from toprecon.options import Options, option
@@ -350,12 +350,9 @@ def _join(
     """Put the parts into one file, and say so."""
     read = [open_events(file).read() for file in files]
     descriptions = [samples_of(events)[0] for events in read]
-    total = descriptions[0].replace(
-        generated=sample.events,
-        entries=sum(d.entries for d in descriptions),
-        sum_of_weights=sum(d.sum_of_weights for d in descriptions),
-        stated_sum_of_weights=sum(d.stated_sum_of_weights for d in descriptions),
-    )
+    entries = sum(d.entries for d in descriptions)
+    options = sample.options.replace(name=sample.name)
+    total = describe(options, sample.events, entries=entries)
     events = concatenate_events([with_samples(e, (total,)) for e in read])
     write_events(events, path)
     produced = Produced(
