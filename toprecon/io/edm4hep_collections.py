@@ -44,18 +44,19 @@ _POSITIONS = {
 """Positions of relations in the older convention, in schema order."""
 
 
-def is_edm4hep(types: Iterable[str]) -> bool:
-    """Return whether column names look like EDM4hep."""
+def is_edm4hep(types: dict[str, str]) -> bool:
+    """Return whether columns, with their types, look like EDM4hep."""
     kinds = set(classify(types).values())
     return RECO in kinds or GENERATED in kinds
 
 
-def classify(types: Iterable[str]) -> dict[str, str]:
+def classify(types: dict[str, str]) -> dict[str, str]:
     """Return the kind of every collection whose members are known."""
     members: dict[str, set[str]] = {}
-    for name in types:
+    for name, kind in types.items():
         collection, dot, member = name.partition(".")
-        if dot and not name.startswith("_") and "#" not in collection:
+        # members are lists; single numbers of such a name are counters of a writer
+        if dot and not kind.replace("_t", "").isalnum() and not name.startswith("_") and "#" not in collection:
             members.setdefault(collection, set()).add(member)
     out = {}
     for collection, found in members.items():

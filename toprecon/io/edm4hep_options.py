@@ -6,9 +6,9 @@ from toprecon.options import Options, option
 
 
 class TagRule(Options):
-    """Where the b score of a jet is.
+    """Where a number of a jet is, such as its b score.
 
-    With nothing given, the conventions found in the wild are tried in turn.
+    With nothing given for the b score, the conventions in use are tried in turn.
     """
 
     collection: str = option("", "collection of particle identifications")
@@ -18,7 +18,7 @@ class TagRule(Options):
     bit: int = option(
         -1, "read the parameter as a word and take this bit; -1 takes the value", low=-1
     )
-    none: bool = option(default=False, doc="whether to read no tag at all")
+    none: bool = option(default=False, doc="whether to read none at all")
 
 
 class IsolationRule(Options):
@@ -42,6 +42,10 @@ class Edm4hepOptions(Options):
     truth: str = option("", "generated particles")
     header: str = option("", "event header")
     tag: TagRule = option(None, "b score", factory=TagRule)
+    track_charge: TagRule | None = option(
+        None, "track charge of the jets; by default from their constituents"
+    )
+    vertex_charge: TagRule | None = option(None, "charge of the b vertex")
     isolation: IsolationRule = option(
         None, "leptons from particle-flow objects", factory=IsolationRule
     )

@@ -181,7 +181,11 @@ class Edm4hepReader:
             names |= {f"{branch}.index", f"{branch}.collectionID"}
             names |= {f"{choice.jets}.particles_{end}" for end in ("begin", "end")}
         names |= {f"{c}_IsolationVar" for c in choice.leptons}
-        return names | tag_columns(self.file, choice.jets, choice.tag)
+        rules = (choice.tag, self._options.track_charge, self._options.vertex_charge)
+        for rule in rules:
+            if rule is not None:
+                names |= tag_columns(self.file, choice.jets, rule)
+        return names
 
     def _object_columns(self, collection: str) -> set[str]:
         """Columns of reconstructed particles, through a subset if it is one."""
@@ -261,11 +265,15 @@ class Edm4hepReader:
         n = jets.p.shape[1]
         scores, bad = tag_scores(block, self.choice.jets, self.choice.tag, jets.counts)
         problems[Reason.INCONSISTENT] |= bad
-        jets.extra = {
-            "btag": scores,
-            "track_charge": np.full(n, np.nan),
-            "vertex_charge": np.full(n, np.nan),
-        }
+        jets.extra = {"btag": scores}
+        for name in ("track_charge", "vertex_charge"):
+            rule = getattr(self._options, name)
+            jets.extra[name] = np.full(n, np.nan)
+            if rule is not None:
+                jets.extra[name], bad = tag_scores(
+                    block, self.choice.jets, rule, jets.counts
+                )
+                problems[Reason.INCONSISTENT] |= bad
         return jets
 
     def _particles(
@@ -294,7 +302,11 @@ class Edm4hepReader:
             )
             starts = np.repeat(np.cumsum(counts) - counts, counts)
             jet_index[particle] = (np.arange(len(starts)) - starts)[jet]
-            if len(jet) and np.array_equal(counts, jets.counts):
+            if (
+                len(jet)
+                and self._options.track_charge is None
+                and np.array_equal(counts, jets.counts)
+            ):
                 jets.extra["track_charge"] = jet_charge(
                     objects.extra["charge"],
                     objects.p,

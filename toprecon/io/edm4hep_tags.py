@@ -1,4 +1,4 @@
-"""The b score of EDM4hep jets, by the rule of the layout."""
+"""Numbers of EDM4hep jets, such as the b score, by the rules of the layout."""
 
 from __future__ import annotations
 
@@ -42,8 +42,8 @@ def tag_columns(file: Collections, jets: str, rule: TagRule) -> set[str]:
     known = file.of_kind(IDENTIFICATION)
     if rule.collection not in known:
         msg = (
-            f"{file.columns.path}: collection {rule.collection!r} is required for the b "
-            f"score, but is missing{nearest(rule.collection, known)}"
+            f"{file.columns.path}: collection {rule.collection!r} is required for the "
+            f"jets, but is missing{nearest(rule.collection, known)}"
         )
         raise InputError(msg)
     names = {f"{rule.collection}.PDG", f"{rule.collection}.likelihood"}
@@ -52,7 +52,7 @@ def tag_columns(file: Collections, jets: str, rule: TagRule) -> set[str]:
         if not branch:
             msg = (
                 f"{file.columns.path}: parameters of {rule.collection!r} are required "
-                "for the b score, but are not stored; use field = 'likelihood'"
+                "for the jets, but are not stored; use field = 'likelihood'"
             )
             raise InputError(msg)
         names |= {branch}

@@ -13,6 +13,7 @@ from toprecon.io.columns import Column, as_column
 from toprecon.io.edm4hep_collections import stored_ids
 
 USUAL_TREE = "events"
+_COLLECTION = 1  # structural role of a list, RNTuple format specification
 
 
 def open_root(path: str) -> Any:
@@ -161,8 +162,7 @@ class RootColumns:
         """Name and type of every column that holds numbers."""
         try:
             if self._is_tuple:
-                keys = self._tree.keys(full_paths=True)
-                return {key: str(self._tree[key].typename) for key in keys}
+                return self._types_of_fields()
             return {
                 branch.name: str(branch.typename)
                 for branch in self._tree.itervalues(recursive=True)
@@ -171,6 +171,18 @@ class RootColumns:
         except Exception as error:
             msg = f"{self.path}: columns of {self.tree!r} are damaged: {short(error)}"
             raise InputError(msg) from error
+
+    def _types_of_fields(self) -> dict[str, str]:
+        """Names and types of the leaves of an RNTuple; ``[]`` marks lists."""
+        lists: dict[str, bool] = {}
+        types: dict[str, str] = {}
+        for key in self._tree.keys(full_paths=True):
+            field = self._tree[key]
+            within = lists.get(key.rpartition(".")[0], False)
+            lists[key] = within or field.record.struct_role == _COLLECTION
+            if not len(field.fields):
+                types[key] = f"{field.typename}{'[]' if lists[key] else ''}"
+        return types
 
     def read(self, names: Iterable[str], start: int, stop: int) -> dict[str, Column]:
         """Return columns of a range of entries.
