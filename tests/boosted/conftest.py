@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from pathlib import Path
 
-import numpy as np
 import pytest
 
-from tests.boosted.showers import quark_pair_events
+from tests.require import require
+from toprecon.generation import GenerationOptions, generate
 from toprecon.io import open_events
 
 LAYOUT = Path(__file__).parents[1] / "io" / "layouts" / "showered.toml"
@@ -27,12 +27,22 @@ def showered(event_data):
     return read
 
 
+def boosted_sample(n, *, seed, **settings):
+    """Freshly showered events at 1.4 TeV, with particles."""
+    require("pythia8mc")
+    options = GenerationOptions(
+        simulation="shower",
+        sqrt_s=1400.0,
+        minimum_sqrt_s_prime=1000.0,
+        keep_particles=True,
+        **settings,
+    )
+    return generate(n, options, seed=seed)
+
+
 @pytest.fixture(scope="session")
 def quark_pairs():
-    """Background: e+e- to light quarks and b quarks at 1.4 TeV, showered here."""
-    return quark_pair_events(600, seed=11)
-
-
-@pytest.fixture
-def toy_rng():
-    return np.random.default_rng(7)
+    """Background: 1500 pairs of light quarks."""
+    return boosted_sample(
+        1500, seed=11, process="qq", helicity="MIXED", preselect=False
+    )

@@ -49,7 +49,8 @@ def test_every_cut_can_refuse(setting, value):
 
 def test_score_of_a_table_by_hand():
     table = FeatureTable(name="tau_32", edges=(0.3, 0.6), log_ratio=(2.0, 0.0, -1.0))
-    likelihood = TagLikelihood(features=(table,), slope=0.5, offset=0.1)
+    table = table.replace(weight=0.5)
+    likelihood = TagLikelihood(features=(table,), offset=0.1)
     values = {"tau_32": np.array([0.2, 0.3, 0.7, np.nan])}
     expected = 1 / (1 + np.exp(-np.array([1.1, 0.1, -0.4])))
     np.testing.assert_allclose(tag_score(values, likelihood)[:3], expected)
@@ -68,7 +69,9 @@ def test_the_calibrated_score_is_a_probability(rng):
 
     features = ("groomed_mass", "w_mass")
     likelihood = calibrate_tag(draw(0.7), draw(-0.7), features=features)
-    assert likelihood.slope < 0.75
+    # each observable alone has weight 1; shared information lowers both to 1/1.8
+    weights = [table.weight for table in likelihood.features]
+    np.testing.assert_allclose(weights, 1 / 1.8, atol=0.08)
     signal, background = (tag_score(draw(s), likelihood) for s in (0.7, -0.7))
     for low, high in ((0.2, 0.3), (0.45, 0.55), (0.7, 0.8)):
         a = np.count_nonzero((signal > low) & (signal < high))

@@ -107,6 +107,7 @@ class FeatureTable(Options):
     log_ratio: tuple[float, ...] = option(
         ..., "ln(signal/background): below the first edge, in the bins, above the last"
     )
+    weight: float = option(1.0, "factor on the log ratio; below 1 if it is not alone")
 
     @model_validator(mode="after")
     def _fitting(self) -> Self:
@@ -123,11 +124,10 @@ class FeatureTable(Options):
 
 
 class TagLikelihood(Options):
-    """Calibrated likelihood ratio: a sum over observables, then a logistic curve."""
+    """Calibrated likelihood ratio: a weighted sum over observables, made a probability."""
 
     features: tuple[FeatureTable, ...] = option((), "tables of the observables")
-    slope: float = option(1.0, "factor on the sum; below 1 if observables correlate")
-    offset: float = option(0.0, "added to the scaled sum")
+    offset: float = option(0.0, "added to the weighted sum of the log ratios")
 
 
 class TagOptions(Options):

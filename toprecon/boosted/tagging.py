@@ -19,7 +19,15 @@ from toprecon.errors import InputError, MissingFieldError, nearest
 
 FloatArray = NDArray[np.float64]
 
-LIKELIHOOD_FEATURES = ("groomed_mass", "w_mass", "tau_32", "sqrt_d23", "w_helicity")
+LIKELIHOOD_FEATURES = (
+    "groomed_mass",
+    "w_mass",
+    "tau_32",
+    "tau_21",
+    "sqrt_d23",
+    "d2",
+    "w_helicity",
+)
 """Observables of the likelihood ratio unless others are named."""
 
 
@@ -85,8 +93,8 @@ def tag_score(
                 f"{nearest(table.name, values)}"
             )
             raise MissingFieldError(msg)
-        total = total + _log_ratio(values[table.name], table)
-    score = likelihood.slope * total + likelihood.offset
+        total = total + table.weight * _log_ratio(values[table.name], table)
+    score = total + likelihood.offset
     return 1.0 / (1.0 + np.exp(-np.clip(score, -500, 500)))
 
 
@@ -109,8 +117,8 @@ def calibrate_tag(
     """Make the tables of the likelihood ratio from fat jets of known origin.
 
     Densities are counted in bins that hold equal numbers of signal and background
-    together; the sum of the log ratios is then calibrated with a logistic curve, since
-    the observables are correlated.
+    together. Since the observables are correlated, the log ratios are then weighted by
+    logistic regression, which also makes the score a probability.
 
     Parameters
     ----------
@@ -134,7 +142,7 @@ def calibrate_tag(
     References
     ----------
     J. Neyman, E. S. Pearson, Phil. Trans. R. Soc. A 231 (1933) 289 (likelihood ratio);
-    J. Platt, Advances in Large Margin Classifiers (1999) 61 (logistic calibration).
+    D. R. Cox, J. R. Stat. Soc. B 20 (1958) 215 (logistic regression).
     """
     sets = [
         {name: np.asarray(kind[name], dtype=np.float64) for name in features}
@@ -153,12 +161,15 @@ def calibrate_tag(
     tables = tuple(
         _table(name, sets[0][name], sets[1][name], n_bins) for name in features
     )
-    sums = [
-        np.sum([_log_ratio(kind[table.name], table) for table in tables], axis=0)
+    ratios = [
+        np.stack([_log_ratio(kind[table.name], table) for table in tables])
         for kind in sets
     ]
-    slope, offset = _logistic(sums[0], sums[1])
-    return TagLikelihood(features=tables, slope=slope, offset=offset)
+    weights, offset = _logistic(ratios[0], ratios[1])
+    weighted = tuple(
+        table.replace(weight=float(w)) for table, w in zip(tables, weights, strict=True)
+    )
+    return TagLikelihood(features=weighted, offset=offset)
 
 
 def _table(
@@ -186,18 +197,24 @@ def _table(
     )
 
 
-def _logistic(signal: FloatArray, background: FloatArray) -> tuple[float, float]:
-    """Slope and offset of the logistic curve, with equal weight of both kinds."""
+def _logistic(signal: FloatArray, background: FloatArray) -> tuple[FloatArray, float]:
+    """Weights of features (K, F) and offset, with equal weight of both kinds."""
     from scipy.optimize import minimize
 
-    def loss(parameters: FloatArray) -> float:
-        slope, offset = parameters
-        wrong_signal = np.logaddexp(0.0, -(slope * signal + offset)).mean()
-        wrong_background = np.logaddexp(0.0, slope * background + offset).mean()
-        return float(wrong_signal + wrong_background)
+    n = len(signal)
 
-    slope, offset = minimize(loss, np.array([1.0, 0.0]), method="BFGS").x
-    return float(slope), float(offset)
+    def loss(parameters: FloatArray) -> tuple[float, FloatArray]:
+        total, slope = 0.0, np.zeros(n + 1)
+        for features, sign in ((signal, 1.0), (background, -1.0)):
+            score = sign * (parameters[:n] @ features + parameters[n])
+            total += float(np.logaddexp(0.0, -score).mean())
+            pull = -sign / (1.0 + np.exp(np.clip(score, -50, 50))) / features.shape[1]
+            slope += np.concatenate([features @ pull, [pull.sum()]])
+        return total, slope
+
+    start = np.concatenate([np.full(n, 1.0 / n), [0.0]])
+    found = minimize(loss, start, jac=True, method="BFGS").x
+    return found[:n], float(found[n])
 
 
 @dataclasses.dataclass(frozen=True)
