@@ -32,6 +32,7 @@ def toy_table(
     charge=0.0,
     outside=0.0,
     background=0.0,
+    other_asymmetry=-0.5,
     weights=None,
     helicity=Helicity.LR,
     first_id=1,
@@ -42,7 +43,7 @@ def toy_table(
     ``loss`` is the probability to lose a backward event; ``wrong_b``, ``wrong_w`` and
     ``unmatched`` are shares of events, which flip with ``flip_forward`` and
     ``flip_backward``; ``charge`` is the probability of a wrong charge; ``outside`` and
-    ``background`` are shares of rows. The observable ``toy.quality`` is larger for
+    ``background`` are shares of rows with ``other_asymmetry``. The observable ``toy.quality`` is larger for
     wrong pairings.
     """
     rng = np.random.default_rng(seed)
@@ -72,6 +73,8 @@ def toy_table(
     place = rng.uniform(size=n)
     is_background = place < background
     is_outside = ~is_background & (place < background + outside)
+    other = draw_cosines(n, other_asymmetry, rng)
+    reco = np.where(is_background | is_outside, other, reco)
     kind = np.where(is_background | is_outside, PairingClass.NOT_SIGNAL, kind)
     w = np.ones(n) if weights is None else np.asarray(weights(rng, n), np.float64)
     samples = (
