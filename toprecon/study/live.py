@@ -1,14 +1,18 @@
 """The live study: plan in, cached results out, one notification of a change.
 
-No widget is known here. Whoever edits the plan only marks it as wanted; one worker
-thread takes the newest plan, reconstructs if it must, and sums. Everything that
-changes state holds one re-entrant lock, because callbacks of a notebook may run in a
-second thread beside a running cell. The synchronous mode does the same work in the
-calling thread, for tests and notebooks that run without anybody watching.
+No widget is known here. Whoever edits the plan only marks it as wanted and returns at
+once; one worker thread takes the newest plan, reconstructs if it must, sums, and calls
+the listeners, who draw. All of that holds one re-entrant lock, because callbacks of a
+notebook may run in a second thread beside a running cell. A moved cut is answered
+first from the rows that it moves over; once nothing was wanted for 0.3 s the study
+*settles*: the sums are made in full, and listeners may draw what is slow. The
+synchronous mode does the same work in the calling thread and settles at once, for
+tests and notebooks that run without anybody watching.
 """
 
 from __future__ import annotations
 
+import os
 import threading
 from collections import OrderedDict
 from collections.abc import Callable
@@ -18,24 +22,28 @@ import awkward as ak
 import numpy as np
 from numpy.typing import NDArray
 
-from toprecon.errors import InputError, StudyError, TopreconError
-from toprecon.events import Binning, EventTable, PairingClass
+from toprecon.errors import InputError, StudyError
+from toprecon.events import Binning, EventTable
 from toprecon.io import EventSource, open_events
-from toprecon.study.cutting import apply_cuts, is_reconstructed, passes_cut
+from toprecon.study.distributions import TableMasks
+from toprecon.study.moving import moved_sums
 from toprecon.study.plan import StudyPlan
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.result import StudyResult, finish
-from toprecon.study.sums import check_plan, summarise
+from toprecon.study.sums import StudySums, check_plan, summarise
 
 TABLES_KEPT = 3
 RESULTS_KEPT = 64
 CHUNK = 20_000
 """Events per chunk: small, so that progress shows and a stop is quick."""
 
+PAUSE = 0.3
+"""Seconds without a change after which the study settles."""
+
 Listener = Callable[["LiveStudy"], Any]
 
 
-class _Superseded(Exception):  # noqa: N818 (a signal between two lines, no error)
+class _GivenUp(Exception):  # noqa: N818 (a signal between two lines, no error)
     """A newer plan is wanted, or the work is to stop."""
 
 
@@ -45,7 +53,8 @@ class LiveStudy:
     Parameters
     ----------
     source : EventTable, EventSource, events, path or list of paths
-        What is studied. With a table the reconstruct part of the plan is fixed.
+        What is studied. With a table, or the path of a saved one, the reconstruct
+        part of the plan is fixed.
     plan : StudyPlan, optional
         The default plan if absent.
     synchronous : bool
@@ -63,26 +72,26 @@ class LiveStudy:
         layout: Any = None,
         catalogue: Any = None,
     ) -> None:
-        if isinstance(source, str) or (
-            not isinstance(source, (EventTable, EventSource, ak.Array))
-        ):
-            source = open_events(source, layout=layout, catalogue=catalogue)
         self.lock = threading.RLock()
         self.synchronous = synchronous
-        self._source = source
+        self._source = _opened(source, layout, catalogue)
         self._plan = plan or StudyPlan()
         self._tables: OrderedDict[str, EventTable] = OrderedDict()
         self._results: OrderedDict[str, StudyResult] = OrderedDict()
-        if isinstance(source, EventTable):
-            check_plan(source, self._plan)
-            self._tables[self._plan.reconstruct_hash] = source
+        self._masks: tuple[EventTable, TableMasks] | None = None
+        self._sums: tuple[StudyPlan, StudySums] | None = None
+        if isinstance(self._source, EventTable):
+            check_plan(self._source, self._plan)
+            self._tables[self._plan.reconstruct_hash] = self._source
         self._listeners: list[Listener] = []
-        self._changed = threading.Condition(self.lock)
+        self._changed = threading.Condition()  # guards the wishes, never held long
         self._wanted = True
         self._working = False
+        self._stopped = False
         self._closed = False
-        self._shown: StudyPlan | None = None
-        self._error: TopreconError | None = None
+        self._shown: tuple[StudyPlan, StudyResult] | None = None
+        self._settled = False
+        self._error: Exception | None = None
         self._progress = (0, 0)
         self._worker: threading.Thread | None = None
         if synchronous:
@@ -99,7 +108,12 @@ class LiveStudy:
         return self._plan
 
     @property
-    def error(self) -> TopreconError | None:
+    def source(self) -> Any:
+        """The event table, source or events studied."""
+        return self._source
+
+    @property
+    def error(self) -> Exception | None:
         """Why there is no result for the newest plan, if so."""
         return self._error
 
@@ -111,19 +125,24 @@ class LiveStudy:
     @property
     def is_busy(self) -> bool:
         """Whether a newer result is on its way."""
-        with self.lock:
+        with self._changed:
             return self._wanted or self._working
+
+    @property
+    def is_settled(self) -> bool:
+        """Whether the result shown is the full one of the newest plan."""
+        return self._settled
 
     @property
     def shown_plan(self) -> StudyPlan | None:
         """Plan of :attr:`result`."""
-        return self._shown
+        return self._shown[0] if self._shown else None
 
     @property
     def table(self) -> EventTable:
         """Event table of the result shown."""
         with self.lock:
-            plan = self._shown or self._plan
+            plan = self.shown_plan or self._plan
             if plan.reconstruct_hash not in self._tables:
                 raise self._error or StudyError("live study: no table is there yet")
             return self._tables[plan.reconstruct_hash]
@@ -132,12 +151,12 @@ class LiveStudy:
     def result(self) -> StudyResult:
         """Result of the newest plan that was worked out."""
         with self.lock:
-            if self._shown is None or self._shown.hash not in self._results:
+            if self._shown is None:
                 raise self._error or StudyError("live study: no result is there yet")
-            return self._results[self._shown.hash]
+            return self._shown[1]
 
     def on_change(self, listener: Listener) -> Callable[[], None]:
-        """Call a function after every new result or error.
+        """Call a function after every new result, error or step of the progress.
 
         Parameters
         ----------
@@ -167,13 +186,11 @@ class LiveStudy:
         **sections
             By the names of :class:`StudyPlan`.
         """
-        with self.lock:
-            self.set_plan(self._plan.replace(**sections))
+        self._edit(lambda plan: plan.replace(**sections))
 
     def set_settings(self, settings: dict[str, Any]) -> None:
         """Replace single settings by path, such as ``{"pairing.cap": 6}``."""
-        with self.lock:
-            self.set_plan(self._plan.with_settings(settings))
+        self._edit(lambda plan: plan.with_settings(settings))
 
     def set_cut(
         self,
@@ -184,8 +201,15 @@ class LiveStudy:
         on: bool = True,
     ) -> None:
         """Set or replace the cut on one observable."""
-        with self.lock:
-            self.set_plan(self._plan.with_cut(observable, low, high, on=on))
+        self._edit(lambda plan: plan.with_cut(observable, low, high, on=on))
+
+    def remove_cut(self, observable: str) -> None:
+        """Take the cut on one observable out of the plan."""
+        self._edit(
+            lambda plan: plan.replace(
+                cuts=tuple(c for c in plan.cuts if c.observable != observable)
+            )
+        )
 
     def set_plan(self, plan: StudyPlan) -> None:
         """Want the results of another plan.
@@ -195,17 +219,22 @@ class LiveStudy:
         plan : StudyPlan
             Takes the place of the present one at once; results follow.
         """
+        self._edit(lambda _: plan)
+
+    def stop(self) -> None:
+        """Stop reconstructing; the next change, or :meth:`resume`, goes on."""
         with self._changed:
-            if plan == self._plan and self._error is None:
-                return
-            self._plan = plan
-            self._wanted = True
+            self._stopped = True
             self._changed.notify_all()
+
+    def resume(self) -> None:
+        """Work the newest plan out again, after a stop or an error."""
+        self._want()
         if self.synchronous:
             self._work_once()
 
     def wait(self, timeout: float | None = 60.0) -> StudyResult:
-        """Wait until nothing newer is on its way.
+        """Wait until nothing newer is on its way and the study has settled.
 
         Parameters
         ----------
@@ -215,35 +244,42 @@ class LiveStudy:
         Returns
         -------
         StudyResult
-            Of the newest plan.
+            Of the newest plan, from full sums.
 
         Raises
         ------
         StudyError
             If it takes longer.
+        Exception
+            Whatever keeps the newest plan from having a result.
         """
+        if threading.current_thread() is self._worker:
+            msg = "live study: a listener must not wait; take .result instead"
+            raise StudyError(msg)
+
+        def is_done() -> bool:
+            busy = self._wanted or self._working
+            return self._closed or not (busy or not (self._settled or self._error))
+
         with self._changed:
-            done = self._changed.wait_for(
-                lambda: not (self._wanted or self._working) or self._closed, timeout
-            )
-            if not done:
+            if not self._changed.wait_for(is_done, timeout):
                 msg = f"live study: no result within {timeout} s"
                 raise StudyError(msg)
-            if self._error is not None:
-                raise self._error
-            return self.result
+        if self._error is not None:
+            raise self._error
+        return self.result
 
     def close(self) -> None:
         """Stop the worker and forget the listeners."""
         with self._changed:
             self._closed = True
-            self._listeners.clear()
             self._changed.notify_all()
         if self._worker is not None and self._worker is not threading.current_thread():
             self._worker.join(timeout=10)
+        self._listeners.clear()
 
     def distribution(
-        self, observable: str, binning: Binning
+        self, observable: str, binning: Binning, *, beams: str = "plan"
     ) -> dict[str, NDArray[np.float64]]:
         """Return the histogram behind a cut: all other cuts applied, by class.
 
@@ -253,6 +289,8 @@ class LiveStudy:
             A column of the table.
         binning : Binning
             Bins.
+        beams : str
+            ``"plan"``, ``"LR"`` or ``"RL"``.
 
         Returns
         -------
@@ -261,35 +299,17 @@ class LiveStudy:
             ``outside`` and ``background``.
         """
         with self.lock:
-            table, plan, result = self.table, self._shown or self._plan, self.result
-        keep = (table["stage"] == 0) & is_reconstructed(table)
-        for cut in plan.active_cuts:
-            if cut.observable != observable:
-                keep &= passes_cut(table, cut)
-        factors = result.beams.factors.factors
-        scale = np.array([factors[s.name] for s in table.samples])
-        weight = table["weight"] * scale[table["sample"]]
-        index = binning.digitise(table[observable])
-        keep &= index >= 0
-        groups = {
-            item.name.lower(): table["is_signal"] & (table["pairing_class"] == item)
-            for item in PairingClass
-        }
-        process = table.is_signal_process
-        groups["outside"] = process & ~table["is_signal"]
-        groups["background"] = ~process
-        return {
-            name: np.bincount(
-                index[keep & mask], weight[keep & mask], minlength=len(binning)
-            ).astype(np.float64)
-            for name, mask in groups.items()
-            if (keep & mask).any()
-        }
+            table, plan, result = self.table, self.shown_plan or self._plan, self.result
+            factors = result.by_helicity.get(beams, result.beams).factors
+            return self._masks_of(table).distribution(
+                plan, factors, observable, binning
+            )
 
     def selected(self) -> NDArray[np.bool_]:
         """Return which rows of the table pass everything, shape (E,)."""
         with self.lock:
-            return apply_cuts(self.table, self._shown or self._plan).selected
+            plan = self.shown_plan or self._plan
+            return self._masks_of(self.table).passing(plan)
 
     def code(self) -> str:
         """Return the lines of Python that give the present result."""
@@ -299,56 +319,109 @@ class LiveStudy:
             "result = run_study(source, plan)"
         )
 
-    def _work(self) -> None:
-        """Take the newest plan whenever one is wanted."""
-        while True:
-            with self._changed:
-                self._changed.wait_for(lambda: self._wanted or self._closed)
-                if self._closed:
-                    return
+    def _masks_of(self, table: EventTable) -> TableMasks:
+        """Return the masks of the table shown."""
+        if self._masks is None or self._masks[0] is not table:
+            self._masks = (table, TableMasks(table))
+        return self._masks[1]
+
+    def _edit(self, change: Callable[[StudyPlan], StudyPlan]) -> None:
+        """Replace the plan by a changed one and want its result."""
+        with self._changed:
+            plan = change(self._plan)
+            if plan == self._plan and self._error is None and not self._stopped:
+                return
+            self._plan = plan
+            self._want()
+        if self.synchronous:
             self._work_once()
 
-    def _work_once(self) -> None:
-        """Work the newest plan out and tell the listeners."""
+    def _want(self) -> None:
         with self._changed:
-            plan = self._plan
-            self._wanted, self._working = False, True
-        error: TopreconError | None = None
-        try:
-            result = self._result_of(plan)
-        except _Superseded:
-            result = None
-        except TopreconError as caught:
-            result, error = None, caught
-        with self._changed:
+            self._wanted, self._settled, self._stopped = True, False, False
+            self._changed.notify_all()
+
+    def _work(self) -> None:
+        """Take the newest plan whenever one is wanted; settle after a pause."""
+        while True:
+            with self._changed:
+                unsettled = not (self._settled or self._error or self._stopped)
+                self._changed.wait_for(
+                    lambda: self._wanted or self._closed,
+                    PAUSE if unsettled else None,
+                )
+                if self._closed:
+                    return
             try:
-                if result is not None:
-                    self._keep(self._results, plan.hash, result, RESULTS_KEPT)
-                    self._shown, self._error = plan, None
-                elif error is not None:
+                self._work_once()
+            except Exception as caught:  # noqa: BLE001 (of a listener; wait raises it)
+                self._error = caught
+
+    def _work_once(self) -> None:
+        """Work the newest plan out and tell the listeners.
+
+        A new wish is worked out quickly if it can be, from the rows that a cut has
+        moved over. Without a newer wish the study then settles on the full sums.
+        """
+        with self._changed:
+            plan, quick = self._plan, self._wanted and not self.synchronous
+            self._wanted, self._working = False, True
+        error: Exception | None = None
+        found: tuple[StudyResult, bool] | None = None
+        try:
+            found = self._result_of(plan, quick=quick)
+        except _GivenUp:
+            if self._stopped:
+                error = StudyError("stopped before the end; change a setting or resume")
+        except Exception as caught:  # noqa: BLE001 (shown to whoever asks)
+            error = caught
+        try:
+            with self.lock:
+                with self._changed:
                     self._error = error
-                if result is not None or error is not None:
-                    for listener in list(self._listeners):
-                        listener(self)
-            finally:
+                    if found is not None:
+                        self._shown = (plan, found[0])
+                        # a wish that came meanwhile will be worked out next
+                        self._settled = found[1] and not quick and not self._wanted
+                if found is not None or error is not None:
+                    self._tell()
+        finally:
+            with self._changed:
                 self._working = False
                 self._changed.notify_all()
 
-    def _result_of(self, plan: StudyPlan) -> StudyResult:
-        """Find or make the result of a plan."""
+    def _tell(self) -> None:
+        """Call the listeners, under the lock."""
+        for listener in list(self._listeners):
+            listener(self)
+
+    def _result_of(self, plan: StudyPlan, *, quick: bool) -> tuple[StudyResult, bool]:
+        """Find or make the result of a plan, and say whether it is the full one."""
         with self.lock:
             known = self._results.get(plan.hash)
             table = self._tables.get(plan.reconstruct_hash)
-        if known is not None:
-            return known
         if table is None:
             table = self._reconstruct(plan)
             with self.lock:
-                self._keep(self._tables, plan.reconstruct_hash, table, TABLES_KEPT)
+                _keep(self._tables, plan.reconstruct_hash, table, TABLES_KEPT)
+        if known is not None:
+            return known, True
+        moved = None
+        if quick and self._sums is not None:
+            old, sums = self._sums
+            if old.reconstruct_hash == plan.reconstruct_hash:
+                moved = moved_sums(sums, table, old, plan)
+        full = moved is None
+        sums = summarise(table, plan) if moved is None else moved
+        self._sums = (plan, sums)
         report, inputs = None, {}
         if isinstance(self._source, EventSource):
             report, inputs = self._source.report, self._source.fingerprints
-        return finish(summarise(table, plan), plan, report=report, inputs=inputs)
+        result = finish(sums, plan, report=report, inputs=inputs)
+        if full:
+            with self.lock:
+                _keep(self._results, plan.hash, result, RESULTS_KEPT)
+        return result, full
 
     def _reconstruct(self, plan: StudyPlan) -> EventTable:
         """Make the table, chunk by chunk, unless something newer is wanted."""
@@ -361,35 +434,53 @@ class LiveStudy:
             chunks: Any = (source[i : i + CHUNK] for i in range(0, n, CHUNK))
         else:
             n, chunks = source.entries, source.chunks(CHUNK)
-        self._progress = (0, n)
         tables = []
+        done = 0
         for events in chunks:
+            self._report_progress(done, n)
             self._check_still_wanted(plan)
             tables.append(reconstruct(events, plan))
-            self._progress = (self._progress[0] + len(events), n)
+            done += len(events)
+        self._report_progress(n, n)
         if not tables:
             msg = "study: at least one event is required; the files hold none"
             raise InputError(msg)
-        self._progress = (n, n)
         if isinstance(source, ak.Array):
             return _joined(tables)
         return EventTable.concatenate(tables)
 
+    def _report_progress(self, done: int, total: int) -> None:
+        self._progress = (done, total)
+        if not self.synchronous:
+            with self.lock:
+                self._tell()
+
     def _check_still_wanted(self, plan: StudyPlan) -> None:
         """Give up if the plan was replaced by one that needs another table."""
-        with self.lock:
+        with self._changed:
             newer = self._plan.reconstruct_hash != plan.reconstruct_hash
-            if self._closed or (self._wanted and newer):
-                raise _Superseded
+            if self._closed or self._stopped or (self._wanted and newer):
+                self._progress = (0, 0)
+                raise _GivenUp
 
-    def _keep(
-        self, cache: OrderedDict[str, Any], key: str, value: Any, most: int
-    ) -> None:
-        """Put into a cache that forgets what was not used for longest."""
-        cache[key] = value
-        cache.move_to_end(key)
-        while len(cache) > most:
-            cache.popitem(last=False)
+
+def _keep(cache: OrderedDict[str, Any], key: str, value: Any, most: int) -> None:
+    """Put into a cache that forgets what was not used for longest."""
+    cache[key] = value
+    cache.move_to_end(key)
+    while len(cache) > most:
+        cache.popitem(last=False)
+
+
+def _opened(source: Any, layout: Any, catalogue: Any) -> Any:
+    """Return a table, source or events for whatever names one."""
+    if isinstance(source, (EventTable, EventSource, ak.Array)):
+        return source
+    if isinstance(source, (str, os.PathLike)):
+        path = os.fspath(source)
+        if path.endswith(".parquet") and EventTable.is_saved(path):
+            return EventTable.load(path)
+    return open_events(source, layout=layout, catalogue=catalogue)
 
 
 def _joined(tables: list[EventTable]) -> EventTable:
