@@ -1,5 +1,6 @@
 from __future__ import annotations
 
+import itertools
 import math
 
 import numpy as np
@@ -61,7 +62,7 @@ def test_the_steps_add_up_for_any_weights_cuts_and_chunking(table, cut, borders)
     mask = selected(table) & (table["toy.quality"] < cut)
     edges = [0, *sorted(min(b, len(table)) for b in borders), len(table)]
     total = None
-    for low, high in zip(edges[:-1], edges[1:], strict=True):
+    for low, high in itertools.pairwise(edges):
         part = table.take(slice(low, high))
         sums = accumulate(part, mask[low:high], part["weight"])
         total = sums if total is None else total + sums
@@ -70,7 +71,7 @@ def test_the_steps_add_up_for_any_weights_cuts_and_chunking(table, cut, borders)
     signal = table["weight"][mask & table["is_signal"]].sum()
     if abs(signal) < 0.5 or abs(table["weight"][mask].sum()) < 0.5:
         return  # weights of both signs that cancel: no asymmetry to speak of
-    size = max(1.0, max(abs(s.shift.value) for s in budget.steps))
+    size = max(1.0, *(abs(s.shift.value) for s in budget.steps))
     assert abs(budget.closure) < 1e-12 * size
     reco = table["cos_theta_reco"]
     w = np.where(mask, table["weight"], 0.0)
