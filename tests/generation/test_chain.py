@@ -138,7 +138,7 @@ def test_backgrounds_are_filtered_and_keep_their_normalisation(process):
     (sample,) = samples_of(events)
     assert sample.generated == 150
     assert sample.normalisation == 150.0
-    assert sample.entries == sample.sum_of_weights == len(events)
+    assert sample.entries == sample.sum_of_weights == 150
     assert sample.process == process
     assert not sample.is_signal_process
     assert not has_truth(events).any()

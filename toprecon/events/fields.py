@@ -189,30 +189,41 @@ def validate_events(events: ak.Array, *, where: str = "events") -> None:
 
 
 def concatenate_events(parts: Sequence[ak.Array]) -> ak.Array:
-    """Join events of the same samples.
+    """Join parts of the same samples, such as the chunks of one source.
 
     Parameters
     ----------
     parts : sequence of ak.Array
-        Events that carry the same list of samples (chunks of one source).
+        Events with the same list of samples, each describing its own part (slices of
+        one array describe the whole: join them with ``ak.concatenate``).
 
     Returns
     -------
     ak.Array
-        All events, in order.
+        All events, in order; entries and sums of weights of the samples are added.
 
     Raises
     ------
     InputError
-        If the parts carry different samples or different fields.
+        If there is no part, or they carry different samples or different fields.
     """
+    if not parts:
+        msg = "events: at least one part is required; got none"
+        raise InputError(msg)
     first = parts[0]
+    samples = samples_of(first)
     for part in parts[1:]:
         if part.fields != first.fields:
             msg = f"events: parts have different fields: {first.fields}, {part.fields}"
             raise InputError(msg)
-        if part.attrs.get("samples") != first.attrs.get("samples"):
-            msg = "events: parts belong to different lists of samples"
+        others = samples_of(part)
+        if [s.name for s in others] != [s.name for s in samples]:
+            msg = (
+                "events: parts must carry the same list of samples; got "
+                f"{[s.name for s in samples]} and {[s.name for s in others]}"
+            )
             raise InputError(msg)
-    joined = ak.concatenate(list(parts))
-    return with_samples(joined, samples_of(first))
+        samples = tuple(
+            known.merged(new) for known, new in zip(samples, others, strict=True)
+        )
+    return with_samples(ak.concatenate(list(parts)), samples)

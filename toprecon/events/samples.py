@@ -6,6 +6,7 @@ import dataclasses
 import math
 from typing import Any, Self
 
+from toprecon.errors import InputError
 from toprecon.events.enums import Helicity
 
 SIGNAL_PROCESS = "ttbar"
@@ -34,9 +35,9 @@ class Sample:
     generated : int
         Events generated, before any filter; -1 if not known.
     entries : int
-        Entries found in the files, rejected ones included.
+        Entries found in the files or generated, rejected ones included.
     sum_of_weights : float
-        Sum of generator weights over the entries read, rejected ones included.
+        Sum of generator weights over these entries, rejected ones included.
     stated_sum_of_weights : float
         The same for the whole sample as a catalogue states it, which also counts
         events dropped before the file was written; NaN if not stated.
@@ -71,6 +72,75 @@ class Sample:
     def replace(self, **changes: Any) -> Self:
         """Return a copy with some fields changed."""
         return dataclasses.replace(self, **changes)
+
+    @property
+    def _is_complete(self) -> bool:
+        """Whether all events generated are among the entries."""
+        return self.entries == self.generated
+
+    def is_same_as(self, other: Sample) -> bool:
+        """Whether two descriptions can be of parts of one sample.
+
+        Parameters
+        ----------
+        other : Sample
+            Another description.
+
+        Returns
+        -------
+        bool
+            Whether everything that is said of the whole sample agrees. What was
+            generated may differ if both parts hold all of theirs.
+        """
+        counts: dict[str, Any] = {"entries": 0, "sum_of_weights": 0.0}
+        if self._is_complete and other._is_complete:
+            counts["generated"] = -1
+        return (
+            self.replace(**counts).to_mapping() == other.replace(**counts).to_mapping()
+        )
+
+    def merged(self, other: Sample) -> Self:
+        """Return the description of two parts of one sample together.
+
+        Parameters
+        ----------
+        other : Sample
+            The same sample, other entries.
+
+        Returns
+        -------
+        Sample
+            Entries and sums of weights are added. ``generated`` is added for parts
+            that hold all of theirs (made by the generator in chunks); parts of a
+            larger sample state the same number, which is kept.
+
+        Raises
+        ------
+        InputError
+            If the descriptions disagree.
+        """
+        if not self.is_same_as(other):
+            mine, theirs = self.to_mapping(), other.to_mapping()
+            names = [
+                key
+                for key in dict.fromkeys([*mine, *theirs])
+                if mine.get(key) != theirs.get(key)
+                and key not in {"entries", "sum_of_weights"}
+            ]
+            differences = ", ".join(
+                f"{key} {mine.get(key)!r} and {theirs.get(key)!r}" for key in names
+            )
+            msg = (
+                f"sample {self.name!r}: its parts must be described alike; got "
+                f"{differences}; give different samples different names"
+            )
+            raise InputError(msg)
+        both = self._is_complete and other._is_complete
+        return self.replace(
+            generated=self.generated + other.generated if both else self.generated,
+            entries=self.entries + other.entries,
+            sum_of_weights=self.sum_of_weights + other.sum_of_weights,
+        )
 
     def to_mapping(self) -> dict[str, Any]:
         """Return plain data; unknown numbers are left out."""

@@ -201,7 +201,8 @@ class EventTable:
                 msg = "event tables: have different columns or selection steps"
                 raise InputError(msg)
             for sample in table.samples:
-                samples[sample.name] = _merge(samples.get(sample.name), sample)
+                known = samples.get(sample.name)
+                samples[sample.name] = known.merged(sample) if known else sample
         order = {name: row for row, name in enumerate(samples)}
         columns = {
             name: np.concatenate([t[name] for t in tables]) for name in first.columns
@@ -312,19 +313,3 @@ class EventTable:
         columns = {name: table.column(name).to_numpy() for name in table.column_names}
         samples = tuple(Sample.from_mapping(row) for row in metadata["samples"])
         return cls(columns, samples, tuple(metadata["stages"]), metadata["provenance"])
-
-
-def _merge(known: Sample | None, new: Sample) -> Sample:
-    """Add entries and sums of weights of two parts of one sample."""
-    if known is None:
-        return new
-    totals: dict[str, Any] = {
-        "entries": known.entries + new.entries,
-        "sum_of_weights": known.sum_of_weights + new.sum_of_weights,
-    }
-    if known.replace(**totals) != new.replace(**totals) and str(
-        known.replace(**totals)
-    ) != str(new.replace(**totals)):
-        msg = f"sample {new.name!r}: two different descriptions of one name"
-        raise InputError(msg)
-    return known.replace(**totals)

@@ -53,7 +53,8 @@ def describe_background(options: GenerationOptions, n: int) -> Sample:
         cross_section_rl=4 * unpolarised * (1 - left_share),
         cross_section=unpolarised,
         generated=n,
-        stated_sum_of_weights=float(n),
+        entries=n,
+        sum_of_weights=float(n),
     )
 
 

@@ -93,12 +93,10 @@ def generate(
     wanted = list(blocks_of(start, n, size)) or [(0, slice(0, 0))]
     parts = [make(_Block(options, seed, number, rows)) for number, rows in wanted]
     events = concatenate_events(parts) if len(parts) > 1 else parts[0]
-    return with_samples(events, (describe(options, n, entries=len(events)),))
+    return with_samples(events, (describe(options, n),))
 
 
-def describe(
-    options: GenerationOptions, n: int, *, entries: int | None = None
-) -> Sample:
+def describe(options: GenerationOptions, n: int) -> Sample:
     """Return the description of a sample, also of one generated in chunks.
 
     Parameters
@@ -107,20 +105,16 @@ def describe(
         Settings of the sample.
     n : int
         Events generated in all chunks together; for a background, collisions.
-    entries : int, optional
-        Events kept; n if absent, which is right for the signal.
 
     Returns
     -------
     Sample
         With cross sections [fb] that include the branching fraction of the decays.
+        Collisions dropped by the preselection count as entries.
     """
-    kept = n if entries is None else entries
     if options.process is Process.TTBAR:
-        description = describe_sample(options, n)
-    else:
-        description = describe_background(options, n)
-    return description.replace(entries=kept, sum_of_weights=float(kept))
+        return describe_sample(options, n)
+    return describe_background(options, n)
 
 
 def random_label(options: GenerationOptions) -> str:

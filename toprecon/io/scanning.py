@@ -286,17 +286,13 @@ def _merged(known: Sample | None, new: Sample, path: str) -> Sample:
     """One sample over several files."""
     if known is None:
         return new
-    same = {"entries": 0, "sum_of_weights": 0.0}
-    if known.replace(**same).to_mapping() != new.replace(**same).to_mapping():
+    if not known.is_same_as(new):
         msg = (
             f"{path}: the files of sample {new.name!r} must agree about process, "
             f"helicity and sqrt_s; got {new.to_mapping()} after {known.to_mapping()}"
         )
         raise InputError(msg)
-    return known.replace(
-        entries=known.entries + new.entries,
-        sum_of_weights=known.sum_of_weights + new.sum_of_weights,
-    )
+    return known.merged(new)
 
 
 def _with_duplicates(scanned: list[_Scanned]) -> tuple[SourceFile, ...]:

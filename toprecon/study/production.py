@@ -26,7 +26,7 @@ from pydantic import field_validator
 
 from toprecon.errors import InputError, OptionError, StudyError
 from toprecon.events import concatenate_events, samples_of, with_samples
-from toprecon.generation import GenerationOptions, describe, generate
+from toprecon.generation import GenerationOptions, generate
 from toprecon.io import open_events, write_events
 from toprecon.kinematics import mass, momentum
 from toprecon.options import Options, option
@@ -349,11 +349,7 @@ def _join(
 ) -> Produced:
     """Put the parts into one file, and say so."""
     read = [open_events(file).read() for file in files]
-    descriptions = [samples_of(events)[0] for events in read]
-    entries = sum(d.entries for d in descriptions)
-    options = sample.options.replace(name=sample.name)
-    total = describe(options, sample.events, entries=entries)
-    events = concatenate_events([with_samples(e, (total,)) for e in read])
+    events = concatenate_events(read)
     write_events(events, path)
     produced = Produced(
         sample.name, path, sample.events, len(events), content_checksum(events)

@@ -53,14 +53,10 @@ class SampleSums:
     undefined: dict[str, int]
 
     def __add__(self, other: Self) -> Self:
-        sample = self.sample.replace(
-            entries=self.sample.entries + other.sample.entries,
-            sum_of_weights=self.sample.sum_of_weights + other.sample.sum_of_weights,
-        )
         names = {**self.undefined, **other.undefined}
         return dataclasses.replace(
             self,
-            sample=sample,
+            sample=self.sample.merged(other.sample),
             cut_flow=self.cut_flow + other.cut_flow,
             asymmetry=self.asymmetry + other.asymmetry,
             migration=self.migration + other.migration,
