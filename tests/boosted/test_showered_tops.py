@@ -246,7 +246,7 @@ def test_two_prong_observables_order_tops_and_w_like_jets(showered):
 @pytest.mark.soak
 @pytest.mark.timeout(1200)
 def test_twenty_thousand_fresh_lepton_jets_events_meet_the_bars():
-    events = boosted_sample(20_000, seed=101, helicity="LR", decays="lepton+jets")
+    events = boosted_sample(20_000, seed=202, helicity="LR", decays="lepton+jets")
     tops = find_tops(events)
     groomed = observable(tops, "groomed_mass")
     _, width = gaussian_core(groomed[np.isfinite(groomed)], 172.0, 15.0)
@@ -265,7 +265,7 @@ def test_twenty_thousand_fresh_lepton_jets_events_meet_the_bars():
 @pytest.mark.soak
 @pytest.mark.timeout(1200)
 def test_fresh_all_hadronic_events_meet_the_bars_with_the_default_weights():
-    events = boosted_sample(8_000, seed=103, helicity="LR", decays="all-hadronic")
+    events = boosted_sample(8_000, seed=203, helicity="LR", decays="all-hadronic")
     tops = find_tops(events, channel=Channel.ALL_HADRONIC)
     particles = read_particles(events)
     fat_jets = find_fat_jets(particles, ak.to_numpy(events.sqrt_s), BoostedOptions())

@@ -16,12 +16,13 @@ from toprecon.boosted import (
 from toprecon.errors import InputError, MissingFieldError
 
 
-def jets(mass, w_mass=80.0, tau_32=0.5, helicity=0.0):
+def jets(mass, w_mass=80.0, tau_32=0.5, helicity=0.0, energy_share=0.9):
     n = len(mass)
     return {
         "groomed_mass": np.asarray(mass, dtype=float),
         "w_mass": np.full(n, w_mass),
         "tau_32": np.full(n, tau_32),
+        "energy_share": np.full(n, energy_share),
         "w_helicity": np.full(n, helicity),
     }
 
@@ -38,6 +39,7 @@ def test_cuts_include_the_lower_limit_and_not_the_upper_one():
         ("w_mass_low", 85.0),
         ("w_mass_high", 75.0),
         ("tau_32_high", 0.4),
+        ("energy_share_low", 0.95),
         ("w_helicity_high", -0.1),
     ],
 )

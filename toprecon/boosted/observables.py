@@ -27,6 +27,7 @@ _SUBSTRUCTURE: tuple[tuple[str, str, str, tuple[float, float], str], ...] = (
     ("sqrt_d34", "GeV", "kT scale at which 4 subjets become 3", (0, 50), "√d_34"),
     ("w_mass", "GeV", "mass of the W candidate", (0, 200), "W candidate mass"),
     ("w_helicity", "", "cosine of the W helicity angle", (-1, 1), "cos(W helicity)"),
+    ("energy_share", "", "energy over half the collision energy", (0, 1.2), "2E/√s"),
     ("n_particles", "", "particles after grooming", (0, 150), "particles"),
 )
 

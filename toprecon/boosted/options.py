@@ -138,6 +138,13 @@ class TagOptions(Options):
     mass_high: float = option(210.0, "largest groomed mass", unit="GeV", low=0)
     w_mass_low: float = option(55.0, "least W candidate mass", unit="GeV", low=0)
     w_mass_high: float = option(105.0, "largest W candidate mass", unit="GeV", low=0)
+    energy_share_low: float = option(
+        0.65,
+        "least energy over half the collision energy; below it quarks often leak",
+        low=0,
+        high=1,
+        step=0.05,
+    )
     tau_32_high: float = option(1.0, "largest tau_3/tau_2", low=0, high=1, step=0.05)
     w_helicity_high: float = option(
         1.0, "largest cosine of the W helicity angle", low=-1, high=1, step=0.05

@@ -56,6 +56,7 @@ def passes_tag(values: Mapping[str, FloatArray], options: TagOptions) -> NDArray
             & (mass < options.mass_high)
             & (w_mass >= options.w_mass_low)
             & (w_mass < options.w_mass_high)
+            & (values["energy_share"] >= options.energy_share_low)
             & (values["tau_32"] <= options.tau_32_high)
             & (values["w_helicity"] <= options.w_helicity_high)
         )

@@ -171,11 +171,11 @@ def _lepton_jets(
     leptonic_w = lepton + neutrino
     side = np.where(charge > 0, -1, 1).astype(np.int8)
     tops = _Pair(jet, other + leptonic_w, found.w, leptonic_w, whole, other)
-    tagged = passes_tag(found.values, options.tag).astype(np.float64)
-    values = {name: found.values[name] for name in SUBSTRUCTURE}
+    share = 2.0 * jet[0] / ak.to_numpy(events.sqrt_s)
+    values = {**found.values, "energy_share": share}
     values |= {
-        "n_tagged": tagged,
-        "score": tag_score(found.values, options.tag.likelihood),
+        "n_tagged": passes_tag(values, options.tag).astype(np.float64),
+        "score": tag_score(values, options.tag.likelihood),
         "energy": jet[0],
         "lepton_angle": to_lepton[row, hadronic],
     }
@@ -210,12 +210,16 @@ def _all_hadronic(
     pair = _Pair(
         *(x[:, :, k] for x in (jets, w, fat_jets.p4) for k in (0, 1)),
     )
-    tagged = passes_tag(found.values, options.tag).reshape(n, 2)
-    likelihood = tag_score(found.values, options.tag.likelihood).reshape(n, 2)
+    per_jet = dict(found.values)
+    per_jet["energy_share"] = (
+        2.0 * jets[0] / ak.to_numpy(events.sqrt_s)[:, None]
+    ).reshape(2 * n)
+    tagged = passes_tag(per_jet, options.tag).reshape(n, 2)
+    likelihood = tag_score(per_jet, options.tag.likelihood).reshape(n, 2)
     values = {}
     for k, prefix in enumerate(("", "second_")):
         for name in SUBSTRUCTURE:
-            values[prefix + name] = found.values[name].reshape(n, 2)[:, k]
+            values[prefix + name] = per_jet[name].reshape(n, 2)[:, k]
     values |= {
         "n_tagged": tagged.sum(axis=1).astype(np.float64),
         "score": np.minimum(likelihood[:, 0], likelihood[:, 1]),
