@@ -16,6 +16,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from toprecon.errors import StudyError
 from toprecon.events import Binning
 from toprecon.migration.matrix import MigrationMatrix
 
@@ -47,8 +48,16 @@ def write_hepdata(
     -------
     Path
         The folder: ``submission.yaml`` and one file per table.
+
+    Raises
+    ------
+    StudyError
+        If the folder exists.
     """
     target = Path(folder)
+    if target.exists():
+        msg = f"{target}: a new folder is required, but this exists; choose another"
+        raise StudyError(msg)
     target.mkdir(parents=True)
     documents: list[dict[str, Any]] = [{"comment": comment or "Migration matrix"}]
     for name, description, data in _tables(matrix):

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import numpy as np
 
-from toprecon.errors import InputError
+from toprecon.errors import InputError, StudyError
 from toprecon.migration.histograms import from_values, to_histograms
 from toprecon.migration.matrix import MigrationMatrix
 
@@ -35,8 +35,11 @@ def write_histogram_json(matrix: MigrationMatrix, path: str | os.PathLike[str]) 
     target = Path(path)
     partial = target.with_name(f".{target.name}.{os.getpid()}.part")
     text = json.dumps(data, default=uhi.io.json.default, sort_keys=True)
-    partial.write_text(text + "\n", encoding="utf-8")
-    partial.replace(target)
+    try:
+        partial.write_text(text + "\n", encoding="utf-8")
+        partial.replace(target)
+    finally:
+        partial.unlink(missing_ok=True)
     return target
 
 
@@ -69,6 +72,6 @@ def read_histogram_json(path: str | os.PathLike[str]) -> MigrationMatrix:
             axes[0]["edges"],
             axes[1]["edges"],
         )
-    except (OSError, ValueError, LookupError, TypeError) as error:
+    except (OSError, ValueError, LookupError, TypeError, StudyError) as error:
         msg = f"{path}: a migration matrix (JSON) is required, but it cannot be read"
         raise InputError(msg) from error

@@ -63,6 +63,26 @@ class MigrationMatrix:
     background_variances: FloatArray
     replicas: FloatArray
 
+    def __post_init__(self) -> None:
+        t, r = len(self.true_binning), len(self.reco_binning)
+        shapes = {
+            "counts": (t, r),
+            "generated": (t,),
+            "missed": (t,),
+            "from_outside": (r,),
+            "background": (r,),
+        }
+        shapes |= {f"{name}_variances": shape for name, shape in shapes.items()}
+        shapes["replicas"] = (len(self.replicas), t + 2, r + 1)
+        for name, shape in shapes.items():
+            found = np.shape(getattr(self, name))
+            if found != shape:
+                msg = (
+                    f"migration matrix: {name} must have the shape {shape} of its "
+                    f"bins; got {found}"
+                )
+                raise StudyError(msg)
+
     @property
     def arrays(self) -> dict[str, FloatArray]:
         """All arrays by name."""
@@ -240,7 +260,9 @@ class MigrationMatrix:
     def __str__(self) -> str:
         t, r = len(self.true_binning), len(self.reco_binning)
         total = self.generated.sum()
-        share = self.counts.sum() / total if total else float("nan")
+        if total == 0:
+            return f"migration matrix {t} x {r}, empty"
+        share = self.counts.sum() / total
         return f"migration matrix {t} x {r}, {share:.1%} of the generated selected"
 
 

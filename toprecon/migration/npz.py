@@ -8,9 +8,19 @@ from pathlib import Path
 
 import numpy as np
 
-from toprecon.errors import InputError
+from toprecon.errors import InputError, StudyError
 from toprecon.events import Binning
 from toprecon.migration.matrix import MigrationMatrix
+
+_UNREADABLE = (
+    OSError,
+    ValueError,
+    KeyError,
+    TypeError,
+    StudyError,
+    EOFError,
+    zipfile.BadZipFile,
+)
 
 
 def write_npz(matrix: MigrationMatrix, path: str | os.PathLike[str]) -> Path:
@@ -30,13 +40,16 @@ def write_npz(matrix: MigrationMatrix, path: str | os.PathLike[str]) -> Path:
     """
     target = Path(path)
     partial = target.with_name(f".{target.name}.{os.getpid()}.part.npz")
-    np.savez(
-        partial,
-        true_edges=matrix.true_binning.array,
-        reco_edges=matrix.reco_binning.array,
-        **matrix.arrays,  # type: ignore[arg-type]
-    )
-    partial.replace(target)
+    try:
+        np.savez(
+            partial,
+            true_edges=matrix.true_binning.array,
+            reco_edges=matrix.reco_binning.array,
+            **matrix.arrays,  # type: ignore[arg-type]
+        )
+        partial.replace(target)
+    finally:
+        partial.unlink(missing_ok=True)
     return target
 
 
@@ -59,11 +72,11 @@ def read_npz(path: str | os.PathLike[str]) -> MigrationMatrix:
         If the file is missing, damaged or something else.
     """
     try:
-        with np.load(path, allow_pickle=False) as archive:
+        with Path(path).open("rb") as file, np.load(file) as archive:
             arrays = dict(archive)
         true = Binning(tuple(arrays.pop("true_edges")))
         reco = Binning(tuple(arrays.pop("reco_edges")))
         return MigrationMatrix(true, reco, **arrays)
-    except (OSError, ValueError, KeyError, TypeError, zipfile.BadZipFile) as error:
+    except _UNREADABLE as error:
         msg = f"{path}: a migration matrix (NPZ) is required, but it cannot be read"
         raise InputError(msg) from error

@@ -8,7 +8,7 @@ from pathlib import Path
 import numpy as np
 import uproot
 
-from toprecon.errors import InputError
+from toprecon.errors import InputError, StudyError
 from toprecon.migration.histograms import from_values, to_histograms
 from toprecon.migration.matrix import MigrationMatrix
 
@@ -65,6 +65,7 @@ def read_root(path: str | os.PathLike[str]) -> MigrationMatrix:
     """
     try:
         with uproot.open(path) as file:
+            _check_complete(path, file.file.fEND)
             names = set(file.keys(cycle=False))
             n = sum(name.startswith("replica_") for name in names)
             blocks = [file[f"replica_{i}"].values() for i in range(n)]
@@ -74,6 +75,19 @@ def read_root(path: str | os.PathLike[str]) -> MigrationMatrix:
                 file["counts"].axis(1).edges(),
                 np.stack(blocks) if blocks else None,
             )
-    except (OSError, ValueError, LookupError, AttributeError) as error:
+    except (
+        OSError,
+        ValueError,
+        LookupError,
+        AttributeError,
+        EOFError,
+        StudyError,
+    ) as error:
         msg = f"{path}: a migration matrix (ROOT) is required, but it cannot be read"
         raise InputError(msg) from error
+
+
+def _check_complete(path: str | os.PathLike[str], size: int) -> None:
+    """Refuse a file that is shorter than its header says."""
+    if Path(path).stat().st_size < size:
+        raise EOFError
