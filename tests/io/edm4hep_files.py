@@ -101,7 +101,8 @@ def from_events(events, numbers, *, beams=True, copies=1):
         codes = np.array([211, 22, 2112, 11, 13])
         kind = ak.to_numpy(ak.flatten(particles.kind))
         charge = ak.to_numpy(ak.flatten(particles.charge))
-        out["PandoraPFOs"] = (reco(particles, charge, codes[kind]), {}, {})
+        sign = np.where((kind >= 3) & (charge > 0), -1, 1)
+        out["PandoraPFOs"] = (reco(particles, charge, sign * codes[kind]), {}, {})
     out["Jets"] = (members, relations, {})
     return out
 

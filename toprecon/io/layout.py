@@ -431,7 +431,7 @@ def _without_defaults(layout: FileLayout) -> dict[str, Any]:
     event = {
         name: value
         for name, value in data.get("event", {}).items()
-        if (name, value) not in {("weight", 1.0), ("helicity", 0.0)}
+        if (name, value) not in (("weight", 1.0), ("helicity", 0.0))
     }
     data = {k: v for k, v in {**data, "event": event}.items() if v != {}}
     for name in ("jets", "leptons", "particles", "photons"):

@@ -1,0 +1,3 @@
+"""Tests of reading and writing event files."""
+
+from __future__ import annotations
