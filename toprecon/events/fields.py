@@ -81,7 +81,16 @@ def make_events(fields: dict[str, Any], samples: Sequence[Sample]) -> ak.Array:
     -------
     ak.Array, shape (E,)
         Events.
+
+    Raises
+    ------
+    InputError
+        If the columns have different lengths.
     """
+    lengths = {name: len(value) for name, value in fields.items()}
+    if len(set(lengths.values())) > 1:
+        msg = f"events: columns must have the same length; got {lengths}"
+        raise InputError(msg)
     layouts = [
         value.layout if isinstance(value, ak.Array) else ak.contents.NumpyArray(value)
         for value in fields.values()

@@ -66,14 +66,23 @@ class EventTable:
     provenance: dict[str, Any] = dataclasses.field(default_factory=dict)
 
     def __post_init__(self) -> None:
+        columns = dict(self.columns)
         for name, kind in COLUMNS.items():
-            if name not in self.columns:
+            if name not in columns:
                 msg = f"event table: column {name!r} is required, but is missing"
                 raise MissingFieldError(msg)
-            self.columns[name] = np.asarray(self.columns[name], dtype=kind)
+            columns[name] = np.asarray(columns[name], dtype=kind)
+        object.__setattr__(self, "columns", columns)
         lengths = {name: len(column) for name, column in self.columns.items()}
         if len(set(lengths.values())) > 1:
             msg = f"event table: columns must have the same length; got {lengths}"
+            raise InputError(msg)
+        row = columns["sample"]
+        if len(row) and not 0 <= row.min() <= row.max() < len(self.samples):
+            msg = (
+                f"event table: rows of samples from 0 to {len(self.samples) - 1} are "
+                f"required; got {row.min()} to {row.max()}"
+            )
             raise InputError(msg)
 
     def __len__(self) -> int:
@@ -189,8 +198,11 @@ class EventTable:
         Raises
         ------
         InputError
-            If the tables were made with different plans or have different columns.
+            If there are none, or they differ in plan, columns or samples.
         """
+        if not tables:
+            msg = "event tables: at least one is required; got none"
+            raise InputError(msg)
         first = tables[0]
         samples: dict[str, Sample] = {}
         for table in tables:
