@@ -10,6 +10,7 @@ merged ones in the order of merging; the last node is the whole event.
 from __future__ import annotations
 
 import dataclasses
+import functools
 import math
 from enum import StrEnum
 from typing import Any
@@ -224,12 +225,22 @@ def as_particles(p4: ArrayLike, counts: ArrayLike) -> tuple[FloatArray, IntArray
     return momenta, numbers
 
 
+@functools.cache
+def _quiet_fastjet() -> Any:
+    """Import FastJet without the banner it prints on the standard output."""
+    import fastjet
+    import fastjet._swig
+
+    # its authors ask to be cited; the README says so in place of the banner
+    fastjet._swig.ClusterSequence.set_fastjet_banner_stream(None)
+    return fastjet
+
+
 def fastjet_sequence(
     p4: FloatArray, counts: IntArray, *, radius: float | None, power: float
 ) -> Any:
     """Let FastJet cluster all events; Durham if the radius is None."""
-    import fastjet
-
+    fastjet = _quiet_fastjet()
     offsets = np.zeros(len(counts) + 1, dtype=np.int64)
     np.cumsum(counts, out=offsets[1:])
     content: Any = ak.contents.RecordArray(
