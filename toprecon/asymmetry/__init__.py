@@ -7,6 +7,14 @@ A_FB, the distortion budget, flip probabilities and the spectra of the angle.
 from __future__ import annotations
 
 from toprecon.asymmetry.budget import STEPS, BudgetStep, DistortionBudget
+from toprecon.asymmetry.estimators import (
+    AngularFit,
+    Estimator,
+    EstimatorOptions,
+    EstimatorResult,
+    estimate,
+    fit_terms,
+)
 from toprecon.asymmetry.result import AsymmetryResult, ClassResult, FlipResult
 from toprecon.asymmetry.spectra import VARIANTS, AngleSpectra
 from toprecon.asymmetry.sums import AsymmetrySums, accumulate
@@ -15,11 +23,17 @@ __all__ = [
     "STEPS",
     "VARIANTS",
     "AngleSpectra",
+    "AngularFit",
     "AsymmetryResult",
     "AsymmetrySums",
     "BudgetStep",
     "ClassResult",
     "DistortionBudget",
+    "Estimator",
+    "EstimatorOptions",
+    "EstimatorResult",
     "FlipResult",
     "accumulate",
+    "estimate",
+    "fit_terms",
 ]

@@ -8,11 +8,14 @@ from __future__ import annotations
 from toprecon.statistics.counting import asymmetry_from_counts, fraction_from_counts
 from toprecon.statistics.linear import Estimate, ratio
 from toprecon.statistics.measured import Measured
+from toprecon.statistics.spectrum import asymmetry_from_spectrum, asymmetry_of_spectrum
 
 __all__ = [
     "Estimate",
     "Measured",
     "asymmetry_from_counts",
+    "asymmetry_from_spectrum",
+    "asymmetry_of_spectrum",
     "fraction_from_counts",
     "ratio",
 ]
