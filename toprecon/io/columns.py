@@ -65,6 +65,13 @@ def as_column(array: ak.Array, *, where: str) -> Column:
         If it holds something else than numbers.
     """
     layout = array.layout
+    if layout.is_indexed and not layout.is_option:
+        layout = layout.project()
+    if layout.is_option and array.ndim > 1:
+        # a missing list is an empty one
+        counts = ak.to_numpy(ak.fill_none(ak.num(array, axis=1), 0))
+        flat = ak.flatten(array, axis=1)
+        return Column(_numbers(flat.layout, where), counts.astype(np.int64))
     if isinstance(layout, ak.contents.ListOffsetArray | ak.contents.ListArray):
         if layout.parameter("__array__") is None:
             layout = layout.to_ListOffsetArray64(True)
@@ -82,6 +89,8 @@ def _numbers(content: Any, where: str) -> NDArray[Any]:
         values = ak.to_numpy(ak.Array(content))
     except (TypeError, ValueError):
         values = np.zeros(0, dtype=object)
+    if isinstance(values, np.ma.MaskedArray) and not np.ma.getmaskarray(values).any():
+        values = values.data
     if isinstance(values, np.ma.MaskedArray):
         values = np.ma.filled(values.astype(np.float64), np.nan)
     if values.dtype == bool:

@@ -149,20 +149,12 @@ def _below(
 
 
 def _leaf(table: Any, name: str) -> ak.Array:
-    """One column of a table as an awkward array, without missing values."""
+    """One column of a table as an awkward array."""
     head, *rest = name.split(".")
     array = ak.from_arrow(table.select([head]))[head]
     for part in rest:
         array = array[part]
-    if array.ndim > 1:
-        # a missing list is an empty one
-        array = ak.fill_none(array, [], axis=0) if _is_option(array) else array
     return ak.to_packed(array)
-
-
-def _is_option(array: ak.Array) -> bool:
-    """Whether whole entries may be missing."""
-    return bool(getattr(array.layout, "is_option", False))
 
 
 def write_parquet(stored: ak.Array, path: Path, text: str) -> None:
