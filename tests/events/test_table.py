@@ -101,6 +101,17 @@ def test_a_truncated_file_is_refused(share, tmp_path):
     assert not EventTable.is_saved(path)
 
 
+@pytest.mark.parametrize("position", range(200, 3000, 400))
+def test_a_flipped_bit_is_never_read_as_another_number(position, tmp_path):
+    table = _table(500)
+    path = table.save(tmp_path / "t.parquet")
+    data = bytearray(path.read_bytes())
+    data[position] ^= 4
+    path.write_bytes(bytes(data))
+    with pytest.raises(InputError, match=r"t\.parquet: "):
+        EventTable.load(path)
+
+
 def test_a_foreign_parquet_file_is_refused(tmp_path):
     path = tmp_path / "events.parquet"
     pq.write_table(pa.table({"a": [1]}), path)

@@ -260,7 +260,7 @@ class EventTable:
         target.parent.mkdir(parents=True, exist_ok=True)
         partial = target.with_name(f".{target.name}.{os.getpid()}.part")
         try:
-            pq.write_table(table, partial, compression="zstd")
+            pq.write_table(table, partial, compression="zstd", write_page_checksum=True)
             partial.replace(target)
         finally:
             partial.unlink(missing_ok=True)
@@ -304,7 +304,7 @@ class EventTable:
             msg = f"{source}: an event table is required, but there is no such file"
             raise InputError(msg)
         try:
-            table = pq.read_table(source)
+            table = pq.read_table(source, page_checksum_verification=True)
         except (pa.ArrowException, OSError, ValueError) as error:
             msg = f"{source}: not a readable Parquet file ({error})"
             raise InputError(msg) from error
