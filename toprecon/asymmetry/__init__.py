@@ -16,6 +16,14 @@ from toprecon.asymmetry.estimators import (
     fit_terms,
 )
 from toprecon.asymmetry.result import AsymmetryResult, ClassResult, FlipResult
+from toprecon.asymmetry.scan_sums import Keep, ScanAxis, ScanSums, accumulate_scan
+from toprecon.asymmetry.scans import (
+    Bias,
+    ScanOptions,
+    ScanPoint,
+    ScanResult,
+    ScanValues,
+)
 from toprecon.asymmetry.spectra import VARIANTS, AngleSpectra
 from toprecon.asymmetry.sums import AsymmetrySums, accumulate
 
@@ -26,6 +34,7 @@ __all__ = [
     "AngularFit",
     "AsymmetryResult",
     "AsymmetrySums",
+    "Bias",
     "BudgetStep",
     "ClassResult",
     "DistortionBudget",
@@ -33,7 +42,15 @@ __all__ = [
     "EstimatorOptions",
     "EstimatorResult",
     "FlipResult",
+    "Keep",
+    "ScanAxis",
+    "ScanOptions",
+    "ScanPoint",
+    "ScanResult",
+    "ScanSums",
+    "ScanValues",
     "accumulate",
+    "accumulate_scan",
     "estimate",
     "fit_terms",
 ]
