@@ -15,6 +15,12 @@ from toprecon.asymmetry.estimators import (
     estimate,
     fit_terms,
 )
+from toprecon.asymmetry.meaning import (
+    BiasMeaning,
+    CouplingShift,
+    asymmetry_derivative,
+    meaning_of,
+)
 from toprecon.asymmetry.result import AsymmetryResult, ClassResult, FlipResult
 from toprecon.asymmetry.scan_sums import Keep, ScanAxis, ScanSums, accumulate_scan
 from toprecon.asymmetry.scans import (
@@ -35,8 +41,10 @@ __all__ = [
     "AsymmetryResult",
     "AsymmetrySums",
     "Bias",
+    "BiasMeaning",
     "BudgetStep",
     "ClassResult",
+    "CouplingShift",
     "DistortionBudget",
     "Estimator",
     "EstimatorOptions",
@@ -51,6 +59,8 @@ __all__ = [
     "ScanValues",
     "accumulate",
     "accumulate_scan",
+    "asymmetry_derivative",
     "estimate",
     "fit_terms",
+    "meaning_of",
 ]

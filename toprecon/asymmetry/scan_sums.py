@@ -246,5 +246,5 @@ def accumulate_scan(
 
 
 def _sums(place: NDArray[np.int64], weight: FloatArray, size: int) -> FloatArray:
-    """Sums of weights per place, as float64 even without rows."""
+    """Return sums of weights per place, as float64 even without rows."""
     return np.bincount(place, weight, size).astype(np.float64)
