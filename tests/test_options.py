@@ -69,11 +69,16 @@ class Needed(Options):
         ({"name": "too long"}, "name: must have at most 5 letters; got 'too long'"),
         (
             {"count": "many"},
-            (
-                "count: input should be a valid integer, unable to parse string as an "
-                "integer; got 'many'"
-            ),
+            "count: must be a whole number; got 'many'",
         ),
+        ({"count": 2.5}, "count: must be a whole number; got 2.5"),
+        ({"size": [1]}, "size: must be a number; got [1]"),
+        ({"limit": "wide"}, "limit: must be a number [rad]; got 'wide'"),
+        ({"name": 3}, "name: must be text; got 3"),
+        ({"terms": 3}, "terms: must be a list; got 3"),
+        ({"terms": [3]}, "terms.0: must be a table of settings; got 3"),
+        ({"inner": {"on": "maybe"}}, "inner.on: must be true or false; got 'maybe'"),
+        ({"inner": 3}, "inner: must be a table of settings; got 3"),
     ],
 )
 def test_a_wrong_setting_is_one_sentence(settings, sentence):

@@ -117,6 +117,19 @@ class Options(BaseModel):
         return self.model_dump(mode="json", exclude_none=True)
 
 
+_KINDS = {
+    "int_": "a whole number",
+    "float_": "a number",
+    "bool_": "true or false",
+    "string_type": "text",
+    "tuple_type": "a list",
+    "list_type": "a list",
+    "model_": "a table of settings",
+    "dict_type": "a table of settings",
+}
+"""What a value must be, by the start of the kind of mistake."""
+
+
 def explain(error: ValidationError, model: type[BaseModel]) -> str:
     """Turn a pydantic error into sentences in the house form.
 
@@ -166,6 +179,10 @@ def _sentence(item: Any, model: type[BaseModel]) -> str:
         return f"{path}: must be one of {context['expected']}; got {received!r}"
     if kind == "value_error":
         return f"{path}: {context['error']}"
+    for start, wanted in _KINDS.items():
+        if kind.startswith(start):
+            unit = f" [{unit.strip()}]" if unit else ""
+            return f"{path}: must be {wanted}{unit}; got {received!r}"
     text = item["msg"][0].lower() + item["msg"][1:]
     return f"{path}: {text}; got {received!r}"
 
