@@ -7,6 +7,7 @@ A_FB, the distortion budget, flip probabilities and the spectra of the angle.
 from __future__ import annotations
 
 from toprecon.asymmetry.budget import STEPS, BudgetStep, DistortionBudget
+from toprecon.asymmetry.comparison import Comparison, Difference, Rows, compare
 from toprecon.asymmetry.estimators import (
     AngularFit,
     Estimator,
@@ -44,13 +45,16 @@ __all__ = [
     "BiasMeaning",
     "BudgetStep",
     "ClassResult",
+    "Comparison",
     "CouplingShift",
+    "Difference",
     "DistortionBudget",
     "Estimator",
     "EstimatorOptions",
     "EstimatorResult",
     "FlipResult",
     "Keep",
+    "Rows",
     "ScanAxis",
     "ScanOptions",
     "ScanPoint",
@@ -60,6 +64,7 @@ __all__ = [
     "accumulate",
     "accumulate_scan",
     "asymmetry_derivative",
+    "compare",
     "estimate",
     "fit_terms",
     "meaning_of",
