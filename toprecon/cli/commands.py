@@ -88,6 +88,7 @@ def generate(options: argparse.Namespace) -> int:
             recipe,
             options.out,
             part_size=options.part_size,
+            replace=options.replace,
             progress=show,
             executor=executor,
         )

@@ -97,6 +97,11 @@ def parser() -> argparse.ArgumentParser:
         "--part-size", type=int, default=2000, help="events made at a time"
     )
     generate.add_argument(
+        "--replace",
+        action="store_true",
+        help="replace files of the same names that were made otherwise",
+    )
+    generate.add_argument(
         "--workers", type=int, default=1, help="processes that work at once"
     )
     generate.set_defaults(command=commands.generate)

@@ -70,6 +70,9 @@ class Recipe(Options):
     @field_validator("samples")
     @classmethod
     def _distinct(cls, value: tuple[SampleRecipe, ...]) -> tuple[SampleRecipe, ...]:
+        if not value:
+            msg = "at least one sample is required; got none"
+            raise ValueError(msg)
         names = [sample.name for sample in value]
         twice = sorted({name for name in names if names.count(name) > 1})
         if twice:
@@ -107,14 +110,29 @@ class Recipe(Options):
         except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
             msg = f"{path}: must be TOML; {error}"
             raise OptionError(msg) from error
-        common = data.pop("options", {})
-        for sample in data.get("samples", []):
-            sample["options"] = {**common, **sample.get("options", {})}
         try:
-            return cls(**data)
+            return cls(**_with_common_options(data))
         except OptionError as error:
             msg = f"{path}: {error}"
             raise OptionError(msg) from None
+
+
+def _with_common_options(data: dict[str, Any]) -> dict[str, Any]:
+    """Put the settings common to all samples into each of them."""
+    common = data.pop("options", {})
+    if not isinstance(common, dict):
+        msg = f"options: must be a table of settings; got {common!r}"
+        raise OptionError(msg)
+    samples = data.get("samples")
+    if not isinstance(samples, list):
+        return data
+    merged = [
+        {**sample, "options": {**common, **sample.get("options", {})}}
+        if isinstance(sample, dict) and isinstance(sample.get("options", {}), dict)
+        else sample
+        for sample in samples
+    ]
+    return {**data, "samples": merged}
 
 
 @dataclasses.dataclass(frozen=True)
@@ -145,6 +163,7 @@ def produce(
     folder: str | os.PathLike[str],
     *,
     part_size: int = 2_000,
+    replace: bool = False,
     progress: Progress | None = None,
     executor: Executor | None = None,
 ) -> list[Produced]:
@@ -158,6 +177,9 @@ def produce(
         Where the files go; samples that are there with the same settings are kept.
     part_size : int
         Events per part; it does not change the content.
+    replace : bool
+        Whether files of the same names, but other settings or content, may be
+        replaced.
     progress : callable, optional
         Called with (sample, events done, events in all).
     executor : concurrent.futures.Executor, optional
@@ -171,7 +193,7 @@ def produce(
     Raises
     ------
     StudyError
-        If the folder is a file.
+        If the folder is a file, or holds a file that may not be replaced.
     OptionError
         If the part size is not positive.
     """
@@ -183,9 +205,19 @@ def produce(
         msg = f"{target}: a folder is required, but this is a file"
         raise StudyError(msg)
     target.mkdir(parents=True, exist_ok=True)
+    jobs = [_Job(sample, recipe.mantissa_bits, target) for sample in recipe.samples]
+    finished = [job.finished() for job in jobs]
+    for job, known in zip(jobs, finished, strict=True):
+        if known is None and job.path.exists() and not replace:
+            msg = (
+                f"{job.path}: a new file is required, but this exists and is not what "
+                "the recipe makes; choose another folder or allow replacing it "
+                "(replace=True, --replace)"
+            )
+            raise StudyError(msg)
     return [
-        _produce(sample, recipe, target, part_size, progress, executor)
-        for sample in recipe.samples
+        known or _produce(job, part_size, progress, executor)
+        for job, known in zip(jobs, finished, strict=True)
     ]
 
 
@@ -298,63 +330,95 @@ def _columns(events: ak.Array, prefix: str = "") -> dict[str, ak.Array]:
     return out
 
 
+@dataclasses.dataclass(frozen=True)
+class _Job:
+    """One sample, and where its file and parts are."""
+
+    sample: SampleRecipe
+    bits: int
+    folder: Path
+
+    @property
+    def path(self) -> Path:
+        return self.folder / f"{self.sample.name}.root"
+
+    @property
+    def parts(self) -> Path:
+        settings = {**self.sample.to_mapping(), "mantissa_bits": self.bits}
+        text = json.dumps(settings, sort_keys=True)
+        key = hashlib.sha256(text.encode()).hexdigest()
+        return self.folder / ".parts" / f"{self.sample.name}-{key[:16]}"
+
+    @property
+    def record(self) -> Path:
+        return self.parts.with_name(f"{self.parts.name}.json")
+
+    def finished(self) -> Produced | None:
+        """Return the finished sample, if its file is still the one that was made."""
+        try:
+            known = json.loads(self.record.read_text(encoding="utf-8"))
+            if known.pop("file") != _hash_of(self.path):
+                return None
+            return Produced(**{**known, "path": self.path})
+        except (OSError, ValueError, KeyError, TypeError):
+            return None
+
+
+def _hash_of(path: Path) -> str:
+    """Hash of the bytes of a file."""
+    with path.open("rb") as file:
+        return hashlib.file_digest(file, "sha256").hexdigest()
+
+
 def _produce(
-    sample: SampleRecipe,
-    recipe: Recipe,
-    folder: Path,
-    part_size: int,
-    progress: Progress | None,
-    executor: Executor | None,
+    job: _Job, part_size: int, progress: Progress | None, executor: Executor | None
 ) -> Produced:
-    """Make one sample, or find it finished."""
-    settings = {**sample.to_mapping(), "mantissa_bits": recipe.mantissa_bits}
-    key = hashlib.sha256(json.dumps(settings, sort_keys=True).encode()).hexdigest()
-    path = folder / f"{sample.name}.root"
-    parts = folder / ".parts" / f"{sample.name}-{key[:16]}"
-    done = parts.with_suffix(".json")
-    if path.exists():
-        known = json.loads(done.read_text()) if done.is_file() else None
-        if known is not None:
-            return Produced(**{**known, "path": path})
-    starts = range(0, sample.events, part_size)
-    jobs: Sequence[tuple[int, int]] = [
-        (start, min(part_size, sample.events - start)) for start in starts
+    """Make one sample."""
+    total = job.sample.events
+    ranges: Sequence[tuple[int, int]] = [
+        (start, min(part_size, total - start)) for start in range(0, total, part_size)
     ]
-    parts.mkdir(parents=True, exist_ok=True)
-    arguments = [(sample, recipe.mantissa_bits, parts, *job) for job in jobs]
+    job.parts.mkdir(parents=True, exist_ok=True)
+    arguments = [(job, *one) for one in ranges]
     results = (
         map(_part, arguments) if executor is None else executor.map(_part, arguments)
     )
     files = []
-    for (start, n), file in zip(jobs, results, strict=True):
+    for (start, n), file in zip(ranges, results, strict=True):
         files.append(file)
         if progress is not None:
-            progress(sample.name, start + n, sample.events)
-    return _join(sample, files, path, parts, done)
+            progress(job.sample.name, start + n, total)
+    return _join(job, files)
 
 
-def _part(arguments: tuple[SampleRecipe, int, Path, int, int]) -> Path:
+def _part(arguments: tuple[_Job, int, int]) -> Path:
     """Make one part, or find it finished."""
-    sample, bits, folder, start, n = arguments
-    path = folder / f"{start:012d}-{n}.root"
+    job, start, n = arguments
+    path = job.parts / f"{start:012d}-{n}.root"
     if not path.exists():
-        options = sample.options.replace(name=sample.name)
-        events = generate(n, options, seed=sample.seed, start=start)
-        write_events(rounded(events, bits), path)
+        options = job.sample.options.replace(name=job.sample.name)
+        events = generate(n, options, seed=job.sample.seed, start=start)
+        write_events(rounded(events, job.bits), path)
     return path
 
 
-def _join(
-    sample: SampleRecipe, files: list[Path], path: Path, parts: Path, done: Path
-) -> Produced:
-    """Put the parts into one file, and say so."""
-    read = [open_events(file).read() for file in files]
-    events = concatenate_events(read)
-    write_events(events, path)
+def _join(job: _Job, files: list[Path]) -> Produced:
+    """Put the parts into one file; the record is there before the file is."""
+    events = concatenate_events([open_events(file).read() for file in files])
+    whole = write_events(events, job.parts / "whole.root")
     produced = Produced(
-        sample.name, path, sample.events, len(events), content_checksum(events)
+        job.sample.name,
+        job.path,
+        job.sample.events,
+        len(events),
+        content_checksum(events),
     )
-    record = {**dataclasses.asdict(produced), "path": path.name}
-    done.write_text(json.dumps(record), encoding="utf-8")
-    shutil.rmtree(parts)
+    record = {
+        **dataclasses.asdict(produced),
+        "path": job.path.name,
+        "file": _hash_of(whole),
+    }
+    job.record.write_text(json.dumps(record), encoding="utf-8")
+    whole.replace(job.path)
+    shutil.rmtree(job.parts)
     return produced
