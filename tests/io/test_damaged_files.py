@@ -33,7 +33,7 @@ def prepare(folder, kind):
         return write_events(events, folder / f"own.{suffix}"), None
     if kind == "les houches":
         made = [pair_event(k, weight=1.0 + k) for k in range(60)]
-        return write_les_houches(folder / "x.lhe", made), None
+        return write_les_houches(folder / "x.lhe.gz", made), None
     truth = events.truth
     fermion = ak.zip(
         {c: truth.top[c] * 0.1 for c in flat_files.P4}

@@ -75,9 +75,12 @@ def as_column(array: ak.Array, *, where: str) -> Column:
     if isinstance(layout, ak.contents.ListOffsetArray | ak.contents.ListArray):
         if layout.parameter("__array__") is None:
             layout = layout.to_ListOffsetArray64(True)
-            offsets = np.asarray(layout.offsets.data)
-            content = layout.content[: offsets[-1]]
-            return Column(_numbers(content, where), np.diff(offsets))
+            counts = np.diff(np.asarray(layout.offsets.data))
+            total = int(counts.sum())
+            if (counts < 0).any() or total > len(layout.content):
+                msg = f"{where}: the numbers of its entries are impossible: damaged"
+                raise InputError(msg)
+            return Column(_numbers(layout.content[:total], where), counts)
     elif isinstance(layout, ak.contents.RegularArray):
         return Column(_numbers(ak.to_numpy(array).reshape(len(array), -1), where))
     return Column(_numbers(layout, where))
@@ -85,6 +88,8 @@ def as_column(array: ak.Array, *, where: str) -> Column:
 
 def _numbers(content: Any, where: str) -> NDArray[Any]:
     """Numbers as a numpy array, booleans as integers."""
+    if isinstance(content, ak.contents.NumpyArray) and content.dtype.kind in "iuf":
+        return np.asarray(content.data)
     try:
         values = ak.to_numpy(ak.Array(content))
     except (TypeError, ValueError):

@@ -56,7 +56,12 @@ def classify(types: dict[str, str]) -> dict[str, str]:
     for name, kind in types.items():
         collection, dot, member = name.partition(".")
         # members are lists; single numbers of such a name are counters of a writer
-        if dot and not kind.replace("_t", "").isalnum() and not name.startswith("_") and "#" not in collection:
+        if (
+            dot
+            and not kind.replace("_t", "").isalnum()
+            and not name.startswith("_")
+            and "#" not in collection
+        ):
             members.setdefault(collection, set()).add(member)
     out = {}
     for collection, found in members.items():

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import gzip
 import os
+import zlib
 from pathlib import Path
 
 from toprecon.errors import InputError, UnknownFormatError
@@ -72,7 +73,7 @@ def first_bytes(path: str, n: int = 512) -> bytes:
     except ImportError as error:
         msg = f"{path}: reading from this address needs a further package ({error})"
         raise InputError(msg) from None
-    except (OSError, EOFError) as error:
+    except (OSError, EOFError, zlib.error) as error:
         msg = f"{path}: an event file is required, but cannot be read ({error})"
         raise InputError(msg) from None
     return head

@@ -241,6 +241,7 @@ class EventColumns(Options):
     id: str = option("", "column with a 64-bit identity; it wins over run and number")
     run: str = option("", "column with the run number")
     number: str = option("", "column with the event number")
+    checksum: str = option("", "column with the checksum of all others, in own files")
     sample: str = option("", "column with the row in the stored list of samples")
     weight: ColumnSource = option(1.0, "generator weight")
     helicity: ColumnSource = option(
@@ -311,7 +312,7 @@ class FileLayout(Options):
         "auto", "'auto', 'number' (run and event number) or 'entry' (place in the file)"
     )
     mass_tolerance: float = option(
-        0.01,
+        0.05,  # stored numbers may have as few as ten bits of mantissa
         "events with sqrt(p^2 - E^2) above this fraction of E are rejected",
         low=0.0,
     )

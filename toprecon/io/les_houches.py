@@ -13,6 +13,7 @@ from __future__ import annotations
 import gzip
 import math
 import re
+import zlib
 
 import numpy as np
 from numpy.typing import NDArray
@@ -59,7 +60,7 @@ class LesHouchesReader:
                 self._stream = gzip.GzipFile(fileobj=self._stream)
             self._starts, self._ends = self._index()
             self._beams, self._energies = self._init()
-        except (OSError, EOFError, ValueError) as error:
+        except (OSError, EOFError, ValueError, zlib.error) as error:
             self.close()
             if isinstance(error, InputError):
                 raise
@@ -161,7 +162,7 @@ class LesHouchesReader:
         size = int(self._ends[stop - 1] - self._starts[start])
         try:
             data = self._stream.read(size)
-        except (OSError, EOFError) as error:
+        except (OSError, EOFError, zlib.error) as error:
             msg = f"{self.path}: entries {start} to {stop} are damaged: {error}"
             raise InputError(msg) from error
         bodies = _BODY.findall(data)

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from toprecon.errors import InputError, nearest
 from toprecon.events import TRUTH_MOMENTA, Sample
+from toprecon.io.checksum import checksums
 from toprecon.io.columns import Column, Columns
 from toprecon.io.layout import (
     ENERGY_UNITS,
@@ -32,7 +33,6 @@ from toprecon.io.raw import (
 )
 
 _OBJECTS = ("jets", "leptons", "particles", "photons")
-_ENERGIES = frozenset({"E", "m", "px", "py", "pz", "pt", "p"})
 _FERMIONS = TRUTH_MOMENTA[6:]
 _DEFAULTS = {"kind": 0, "jet_index": -1, "pdg": 0}
 
@@ -68,6 +68,8 @@ class ColumnReader:
         )
         self._header_names = _header_branches(self.layout)
         self._names = sorted(_branches(self.layout) | self._header_names)
+        counters = {t.count for name in _OBJECTS for t in getattr(self.layout, name)}
+        self._summed = set(self._names) - counters - {self.layout.event.checksum}
 
     def _present(self, layout: FileLayout) -> FileLayout:
         """Leave out optional parts that the file lacks; the others must exist."""
@@ -137,6 +139,7 @@ class ColumnReader:
         values = self._columns.read(self._names, start, stop)
         columns = _Range(values, stop - start, self._columns.path)
         unit = ENERGY_UNITS[layout.energy_unit]
+        self._check_sums(columns)
         objects = {}
         for name in _OBJECTS:
             tables = getattr(layout, name)
@@ -151,6 +154,14 @@ class ColumnReader:
         truth = self._truth(columns, unit) if layout.truth else None
         headers = self._headers(columns)
         return RawEvents(headers, objects, missing, truth, columns.problems)
+
+    def _check_sums(self, columns: _Range) -> None:
+        """Hold stored checksums against the numbers read."""
+        name = self.layout.event.checksum
+        if name:
+            stored = columns.integers(name, np.uint64)
+            parts = {k: columns.values[k] for k in self._summed}
+            columns.problem(Reason.DAMAGED, stored != checksums(parts, columns.n))
 
     def _truth(self, columns: _Range, unit: float) -> RawTruth:
         """Return generated momenta; NaN where the file has none."""
@@ -206,7 +217,7 @@ class _Range:
         values, unknown = evaluate(source, column.values)
         if unknown is not None:
             self.problem(Reason.UNKNOWN_VALUE, unknown)
-        return values
+        return values.astype(np.float64, copy=False)
 
     def scalars(self, table: MomentumColumns) -> dict[str, FloatArray]:
         """All quantities of a table with one number per event."""
@@ -244,8 +255,8 @@ def evaluate(
         Which values are not in the map.
     """
     if not source.values:
-        out = values.astype(np.float64)
-        return (out * source.scale if source.scale != 1.0 else out), None
+        scaled = values if source.scale == 1.0 else values * np.float64(source.scale)
+        return scaled, None
     fill = np.nan if source.default is None else source.default
     out = np.full(values.shape, fill, dtype=np.float64)
     known = np.zeros(values.shape, dtype=bool)
@@ -289,7 +300,7 @@ def _objects(
         if given is None:
             given = np.full(p.shape[1], _DEFAULTS.get(key, np.nan))
         whole = np.issubdtype(kind, np.integer)
-        extra[key] = _integers(given, kind) if whole else given
+        extra[key] = _integers(given, kind) if whole else given.astype(np.float64, copy=False)
     objects = RawObjects(p, counts, extra)
     if table.zero_is_absent:
         objects = objects.keep_objects(np.any(p != 0, axis=0))
@@ -368,31 +379,43 @@ def _momentum(
     table: MomentumColumns, values: dict[str, FloatArray], unit: float
 ) -> FloatArray:
     """Components E, px, py, pz [GeV] from whatever components are given."""
-    c = {
-        name: values[name] * unit if name in _ENERGIES and unit != 1 else values[name]
-        for name in MOMENTUM_COMPONENTS
-        if name in values
-    }
+    length = len(next(iter(values.values())))
+    out = np.empty((4, length))
+    energy, px, py, pz = out
+
+    def given(name: str) -> FloatArray:
+        return values[name].astype(np.float64, copy=False)
+
     # damaged values overflow here; they are found by the checks for infinity
     with np.errstate(all="ignore"):
         if table.px is not None:
-            px, py, pz = c["px"], c["py"], c["pz"]
-        elif table.pt is not None:
-            px, py = c["pt"] * np.cos(c["phi"]), c["pt"] * np.sin(c["phi"])
-            pz = c["pt"] * np.sinh(c["eta"])
+            px[:], py[:], pz[:] = values["px"], values["py"], values["pz"]
         else:
-            pt = c["p"] * np.sin(c["theta"])
-            px, py = pt * np.cos(c["phi"]), pt * np.sin(c["phi"])
-            pz = c["p"] * np.cos(c["theta"])
+            if table.pt is not None:
+                pt = given("pt")
+                # sinh(eta), at half the price
+                growth = np.exp(given("eta"))
+                np.multiply(pt, 0.5 * (growth - 1.0 / growth), out=pz)
+            else:
+                p, theta = given("p"), given("theta")
+                pt = p * np.sin(theta)
+                np.multiply(p, np.cos(theta), out=pz)
+            phi = given("phi")
+            np.multiply(pt, np.cos(phi), out=px)
+            np.multiply(pt, np.sin(phi), out=py)
         if table.E is not None:
-            energy = c["E"]
+            energy[:] = values["E"]
         else:
             # a negative mass stands for a negative mass squared: rounding if small,
             # found by the check of E^2 < p^2 if not
-            square = px * px + py * py + pz * pz + c["m"] * np.abs(c["m"])
-            energy = np.sqrt(np.maximum(square, 0.0))
-            energy[np.isnan(square)] = np.nan
-    return np.stack([energy, px, py, pz])
+            mass = given("m")
+            square = mass * np.abs(mass)
+            for component in (px, py, pz):
+                square += component * component
+            np.sqrt(np.maximum(square, 0.0), out=energy)
+        if unit != 1.0:
+            out *= unit
+    return out
 
 
 def _complete_leptons(table: LeptonColumns, values: dict[str, FloatArray]) -> None:
@@ -400,9 +423,9 @@ def _complete_leptons(table: LeptonColumns, values: dict[str, FloatArray]) -> No
     if table.pdg is None:
         return
     if "charge" not in values:
-        values["charge"] = -np.sign(values["pdg"])
+        values["charge"] = -np.sign(values["pdg"].astype(np.float64))
     elif table.pdg.value is not None:
-        values["pdg"] = -np.sign(values["charge"]) * abs(table.pdg.value)
+        values["pdg"] = -np.sign(values["charge"].astype(np.float64)) * abs(table.pdg.value)
 
 
 def _integers(values: NDArray[Any], kind: Any) -> NDArray[Any]:
@@ -439,7 +462,7 @@ def _branches(layout: FileLayout) -> set[str]:
 def _header_branches(layout: FileLayout) -> set[str]:
     """Columns that the layout names for whole events."""
     event = layout.event
-    names = {event.id, event.run, event.number, event.sample}
+    names = {event.id, event.run, event.number, event.sample, event.checksum}
     names |= {s.branch for s in (event.weight, event.helicity, event.sqrt_s) if s}
     return names - {""}
 

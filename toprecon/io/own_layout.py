@@ -19,6 +19,8 @@ import numpy as np
 
 from toprecon.errors import InputError, OptionError
 from toprecon.events import TRUTH_MOMENTA, Sample, samples_of, validate_events
+from toprecon.io.checksum import checksums
+from toprecon.io.columns import Column, as_column
 from toprecon.io.layout import FileLayout
 from toprecon.io.raw import EXTRAS, OPTIONAL
 from toprecon.io.root_columns import USUAL_TREE
@@ -75,10 +77,12 @@ def own_layout(separator: str = "_", fields: tuple[str, ...] = OPTIONAL) -> File
             truth[name]["pdg"] = separator.join(("truth", name, "pdg"))
         truth["sqrt_s_prime"] = separator.join(("truth", "sqrt_s_prime"))
         parts["truth"] = {**truth, "zero_is_absent": False}
+    # Parquet has checksums of its own
+    checksum = ("checksum",) if separator == "_" else ()
     return FileLayout(
         name="toprecon",
         beams={"electron_direction": "+z", "crossing_angle": 0.0},
-        event={name: name for name in _HEADERS},
+        event={name: name for name in (*_HEADERS, *checksum)},
         tree=USUAL_TREE if separator == "_" else "",
         **parts,
     )
@@ -268,6 +272,7 @@ def _write_root(events: ak.Array, path: Path, text: str, real: Any) -> None:
             columns |= {f"missing_{key}": part[key] for key in part.fields}
         else:
             columns[name] = part
+    columns["checksum"] = checksums(_leaves(columns), len(events))
     types = {name: _branch_type(column) for name, column in columns.items()}
     # LZ4 is read fastest, and its blocks carry checksums that reveal damage
     with uproot.recreate(path, compression=uproot.LZ4(4)) as file:
@@ -283,8 +288,20 @@ def _write_root(events: ak.Array, path: Path, text: str, real: Any) -> None:
             tree.extend({name: column[part] for name, column in columns.items()})
 
 
+def _leaves(columns: dict[str, ak.Array]) -> dict[str, Column]:
+    """Columns as they will be read, by name."""
+    leaves = {}
+    for name, column in columns.items():
+        parts = {f"{name}_{key}": column[key] for key in column.fields}
+        for leaf, values in (parts or {name: column}).items():
+            leaves[leaf] = as_column(values, where=leaf)
+    return leaves
+
+
 def _branch_type(column: ak.Array) -> Any:
     """Type of a column, given so that an empty one keeps it."""
+    if isinstance(column, np.ndarray):
+        return column.dtype
     if column.ndim == 1 and not column.fields:
         return ak.to_numpy(column).dtype
     return str(ak.type(column).content)

@@ -21,6 +21,7 @@ FloatArray = NDArray[np.float64]
 class Reason(StrEnum):
     """Why an entry of a file is no event; tested in this order."""
 
+    DAMAGED = "stored checksum does not fit"
     INCONSISTENT = "inconsistent counts"
     UNKNOWN_VALUE = "value not in the map of the layout"
     NOT_FINITE = "NaN or infinity"

@@ -299,8 +299,11 @@ def _with_duplicates(scanned: list[_Scanned]) -> tuple[SourceFile, ...]:
     """Find entries whose identity came before, over all files."""
     lengths = [len(result.ids) for result in scanned]
     ids = np.concatenate([result.ids for result in scanned])
-    first = np.zeros(len(ids), dtype=bool)
-    first[np.unique(ids, return_index=True)[1]] = True
+    first = np.ones(len(ids), dtype=bool)
+    ordered = np.sort(ids)
+    if np.any(ordered[1:] == ordered[:-1]):
+        first[:] = False
+        first[np.unique(ids, return_index=True)[1]] = True
     ends = np.cumsum(lengths)
     files = []
     for result, end, length in zip(scanned, ends, lengths, strict=True):
