@@ -11,7 +11,7 @@ from tests.toys import selected, toy_table
 from toprecon.asymmetry import STEPS, accumulate
 from toprecon.events import EventTable, PairingClass
 from toprecon.resampling import replica_counts
-from toprecon.statistics import asymmetry_from_counts
+from toprecon.statistics import Measured, asymmetry_from_counts
 
 CAUSES = {
     "loss": 0.2,
@@ -264,3 +264,34 @@ def test_errors_cover_the_truth_in_two_thirds_of_toys():
 @pytest.mark.soak
 def test_errors_cover_the_truth_in_two_thirds_of_many_toys():
     check_coverage(500)
+
+
+def test_an_observed_asymmetry_is_corrected_back_to_the_generated_one():
+    table = toy_table(8000, seed=3, weights=exponential, **CAUSES)
+    result = result_of(table)
+    found = result.corrected(result.reconstructed_signal)
+    assert found.value == pytest.approx(result.generated.value, abs=1e-12)
+    assert found.data_error == pytest.approx(
+        result.reconstructed_signal.error / result.flips.slope.value
+    )
+    observed = Measured(result.reconstructed_signal.value + 0.05, 0.01)
+    moved = result.corrected(observed)
+    assert moved.value - found.value == pytest.approx(0.05 / result.flips.slope.value)
+    # error of the correction for a fixed observed value: the spread of replicas
+    counts = replica_counts(table["id"], 5, 400)
+    spread = np.std(
+        [
+            result_of(table, table["weight"] * c).corrected(observed).value
+            for c in counts
+        ]
+    )
+    # known to 3.5 %; 3.5 sigma
+    assert spread == pytest.approx(moved.simulation_error, rel=0.125)
+
+
+def test_the_estimators_of_a_result_are_those_of_its_spectra():
+    result = result_of(toy_table(4000, seed=3, **CAUSES))
+    found = result.estimators(spectrum="reconstructed_signal")
+    assert found.counting.in_range.value == pytest.approx(
+        result.reconstructed_signal.value, abs=1e-12
+    )

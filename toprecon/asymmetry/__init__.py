@@ -16,13 +16,23 @@ from toprecon.asymmetry.estimators import (
     estimate,
     fit_terms,
 )
+from toprecon.asymmetry.helicities import (
+    BeamRun,
+    HelicityObservables,
+    helicity_observables,
+)
 from toprecon.asymmetry.meaning import (
     BiasMeaning,
     CouplingShift,
     asymmetry_derivative,
     meaning_of,
 )
-from toprecon.asymmetry.result import AsymmetryResult, ClassResult, FlipResult
+from toprecon.asymmetry.result import (
+    AsymmetryResult,
+    ClassResult,
+    Corrected,
+    FlipResult,
+)
 from toprecon.asymmetry.scan_sums import Keep, ScanAxis, ScanSums, accumulate_scan
 from toprecon.asymmetry.scans import (
     Bias,
@@ -41,11 +51,13 @@ __all__ = [
     "AngularFit",
     "AsymmetryResult",
     "AsymmetrySums",
+    "BeamRun",
     "Bias",
     "BiasMeaning",
     "BudgetStep",
     "ClassResult",
     "Comparison",
+    "Corrected",
     "CouplingShift",
     "Difference",
     "DistortionBudget",
@@ -53,6 +65,7 @@ __all__ = [
     "EstimatorOptions",
     "EstimatorResult",
     "FlipResult",
+    "HelicityObservables",
     "Keep",
     "Rows",
     "ScanAxis",
@@ -67,5 +80,6 @@ __all__ = [
     "compare",
     "estimate",
     "fit_terms",
+    "helicity_observables",
     "meaning_of",
 ]

@@ -17,6 +17,11 @@ from toprecon.asymmetry.budget import (
     budget_of,
     coefficients,
 )
+from toprecon.asymmetry.estimators import (
+    EstimatorOptions,
+    EstimatorResult,
+    estimate,
+)
 from toprecon.asymmetry.spectra import FLIP_BINS, AngleSpectra
 from toprecon.asymmetry.state import (
     BACKGROUND,
@@ -88,6 +93,25 @@ class FlipResult:
     slope: Measured
     offset: Measured
     flipped: Measured
+
+
+@dataclasses.dataclass(frozen=True)
+class Corrected:
+    """A_FB of all generated signal that follows from an observed one.
+
+    Parameters
+    ----------
+    value : float
+        (observed - offset)/slope minus the shift of the acceptance.
+    data_error : float
+        Error of the observed value, over the slope.
+    simulation_error : float
+        From the errors of slope, offset and acceptance in the simulated sample.
+    """
+
+    value: float
+    data_error: float
+    simulation_error: float
 
 
 class AsymmetryResult:
@@ -257,20 +281,63 @@ class AsymmetryResult:
     @cached_property
     def flips(self) -> FlipResult:
         """Flip probabilities of the selected signal; exact for signs of +-1."""
-        x = self._first.ravel()
-        unit, t, r, tr = (
-            coefficients(SELECTED, c) for c in (UNIT, TRUE, RECO, TRUE_RECO)
-        )
-        a = ratio(unit + t - r - tr, 2 * (unit + t), x)
-        b = ratio(unit - t + r - tr, 2 * (unit - t), x)
-        one = Estimate(1.0, np.zeros(len(x)))
+        a, b, flipped = self._flips
+        one = Estimate.constant(1.0, len(a.gradient))
         return FlipResult(
             a.measured(self._covariance),
             b.measured(self._covariance),
             (one - a - b).measured(self._covariance),
             (b - a).measured(self._covariance),
-            ratio(unit - tr, 2 * unit, x).measured(self._covariance),
+            flipped.measured(self._covariance),
         )
+
+    @property
+    def _flips(self) -> tuple[Estimate, Estimate, Estimate]:
+        """Forward to backward, backward to forward, and the fraction of all."""
+        x = self._first.ravel()
+        unit, t, r, tr = (
+            coefficients(SELECTED, c) for c in (UNIT, TRUE, RECO, TRUE_RECO)
+        )
+        return (
+            ratio(unit + t - r - tr, 2 * (unit + t), x),
+            ratio(unit - t + r - tr, 2 * (unit - t), x),
+            ratio(unit - tr, 2 * unit, x),
+        )
+
+    def corrected(self, observed: Measured) -> Corrected:
+        """Correct an observed A_FB of the signal for flips and acceptance.
+
+        Parameters
+        ----------
+        observed : Measured
+            Of selected signal, background already subtracted.
+
+        Returns
+        -------
+        Corrected
+            Right on average only if data flip as the simulation does.
+        """
+        a, b, _ = self._flips
+        size = len(a.gradient)
+        slope = Estimate.constant(1.0, size) - a - b
+        acceptance = self._estimate(SELECTED, TRUE) - self._estimate(
+            (*SELECTED, REJECTED), TRUE
+        )
+        found = (Estimate.constant(observed.value, size) - (b - a)) / slope - acceptance
+        return Corrected(
+            value=found.value,
+            data_error=abs(observed.error / slope.value) if slope.value else math.nan,
+            simulation_error=found.measured(self._covariance).error,
+        )
+
+    def estimators(
+        self,
+        options: EstimatorOptions | None = None,
+        *,
+        spectrum: str = "reconstructed",
+    ) -> EstimatorResult:
+        """Return A_FB by counting and by a fit, see :func:`estimate`."""
+        return estimate(self.spectra, options, spectrum=spectrum)
 
     @property
     def flip_bins(self) -> Binning:

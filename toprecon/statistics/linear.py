@@ -9,6 +9,7 @@ result, and the covariance of any two, is g^T C h with the covariance C of the s
 from __future__ import annotations
 
 import dataclasses
+from typing import Self
 
 import numpy as np
 from numpy.typing import NDArray
@@ -44,6 +45,17 @@ class Estimate:
             self.value * other.value,
             self.value * other.gradient + other.value * self.gradient,
         )
+
+    def __truediv__(self, other: Estimate) -> Estimate:
+        if other.value == 0:
+            return Estimate(float("nan"), np.full(len(self.gradient), np.nan))
+        value = self.value / other.value
+        return Estimate(value, (self.gradient - value * other.gradient) / other.value)
+
+    @classmethod
+    def constant(cls, value: float, size: int) -> Self:
+        """Return a number that does not depend on the sums."""
+        return cls(value, np.zeros(size))
 
     def covariance(self, other: Estimate, of_sums: FloatArray) -> float:
         """Return the covariance with another estimate, given that of the sums."""
