@@ -83,6 +83,63 @@ class MigrationMatrix:
                 )
                 raise StudyError(msg)
 
+    @classmethod
+    def from_blocks(
+        cls,
+        true_binning: Binning,
+        reco_binning: Binning,
+        block: FloatArray,
+        variances: FloatArray,
+        replicas: FloatArray | None = None,
+    ) -> Self:
+        """Return the matrix of blocks as :func:`cells_of` lays them out.
+
+        Parameters
+        ----------
+        true_binning, reco_binning : Binning
+            Bins.
+        block, variances : array, shape (T + 2, R + 1)
+            Sums of weights and of squared weights.
+        replicas : array, shape (N, T + 2, R + 1), optional
+            Poisson replicas.
+
+        Returns
+        -------
+        MigrationMatrix
+            With copies of the parts.
+        """
+        t = len(true_binning)
+        parts = {}
+        for suffix, values in (("", block), ("_variances", variances)):
+            parts[f"counts{suffix}"] = values[:t, :-1].copy()
+            parts[f"generated{suffix}"] = values[:t].sum(axis=1)
+            parts[f"missed{suffix}"] = values[:t, -1].copy()
+            parts[f"from_outside{suffix}"] = values[t, :-1].copy()
+            parts[f"background{suffix}"] = values[t + 1, :-1].copy()
+        if replicas is None:
+            replicas = np.zeros((0, *block.shape))
+        return cls(true_binning, reco_binning, **parts, replicas=replicas)
+
+    def blocks(self) -> tuple[FloatArray, FloatArray]:
+        """Return sums of weights and of squared weights as blocks.
+
+        Returns
+        -------
+        tuple of array, shape (T + 2, R + 1)
+            As :func:`cells_of` lays them out; the last column of the rows for events
+            from outside and for background is 0.
+        """
+        t, r = self.counts.shape
+        out = []
+        for suffix in ("", "_variances"):
+            block = np.zeros((t + 2, r + 1))
+            block[:t, :-1] = getattr(self, f"counts{suffix}")
+            block[:t, -1] = getattr(self, f"missed{suffix}")
+            block[t, :-1] = getattr(self, f"from_outside{suffix}")
+            block[t + 1, :-1] = getattr(self, f"background{suffix}")
+            out.append(block)
+        return out[0], out[1]
+
     @property
     def arrays(self) -> dict[str, FloatArray]:
         """All arrays by name."""
@@ -298,39 +355,51 @@ def accumulate(
         Ready to be added to that of other rows.
     """
     options = options or MigrationOptions()
-    true_binning, reco_binning = options.true_binning, options.reco_binning
-    n_true, n_reco = len(true_binning), len(reco_binning)
-    true = table.bins("cos_theta_true", true_binning).astype(np.int64)
-    reco = np.where(selected, table.bins("cos_theta_reco", reco_binning), -1)
-    inside = table["is_signal"] & (true >= 0)
-    # one block of cells: T rows of the matrix, then outside, then background;
-    # the last column is for events that are not in a reconstructed bin
-    row = np.where(inside, true, np.where(table.is_signal_process, n_true, n_true + 1))
-    column = np.where(reco >= 0, reco, n_reco)
-    cell = row * (n_reco + 1) + column
-    shape = (n_true + 2, n_reco + 1)
+    cell, shape = cells_of(table, selected, options)
 
     def fill(w: FloatArray) -> FloatArray:
         sums = np.bincount(cell, w, minlength=shape[0] * shape[1])
         return sums.astype(np.float64).reshape(shape)
 
-    block, block_variances = fill(weight), fill(weight**2)
     replicas = np.zeros((options.replicas, *shape))
     for index in range(options.replicas):
         counts = replica_counts(table["id"], options.seed + index, 1)[0]
         replicas[index] = fill(weight * counts)
-    return MigrationMatrix(
-        true_binning,
-        reco_binning,
-        counts=block[:n_true, :-1],
-        counts_variances=block_variances[:n_true, :-1],
-        generated=block[:n_true].sum(axis=1),
-        generated_variances=block_variances[:n_true].sum(axis=1),
-        missed=block[:n_true, -1],
-        missed_variances=block_variances[:n_true, -1],
-        from_outside=block[n_true, :-1],
-        from_outside_variances=block_variances[n_true, :-1],
-        background=block[n_true + 1, :-1],
-        background_variances=block_variances[n_true + 1, :-1],
-        replicas=replicas,
+    return MigrationMatrix.from_blocks(
+        options.true_binning,
+        options.reco_binning,
+        fill(weight),
+        fill(weight**2),
+        replicas,
     )
+
+
+def cells_of(
+    table: EventTable, selected: NDArray[np.bool_], options: MigrationOptions
+) -> tuple[NDArray[np.int64], tuple[int, int]]:
+    """Return the cell of every row in one block that holds all arrays.
+
+    Parameters
+    ----------
+    table : EventTable
+        Rows.
+    selected : array of bool, shape (E,)
+        Rows that pass everything.
+    options : MigrationOptions
+        Bins.
+
+    Returns
+    -------
+    tuple
+        Cells, shape (E,), and the shape (T + 2, R + 1) of the block: T rows of the
+        matrix, then from outside, then background; the last column is for events that
+        are in no reconstructed bin.
+    """
+    true_binning, reco_binning = options.true_binning, options.reco_binning
+    n_true, n_reco = len(true_binning), len(reco_binning)
+    true = table.bins("cos_theta_true", true_binning).astype(np.int64)
+    reco = np.where(selected, table.bins("cos_theta_reco", reco_binning), -1)
+    inside = table["is_signal"] & (true >= 0)
+    row = np.where(inside, true, np.where(table.is_signal_process, n_true, n_true + 1))
+    column = np.where(reco >= 0, reco, n_reco)
+    return row * (n_reco + 1) + column, (n_true + 2, n_reco + 1)
