@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 import json
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
 
+from tests.require import require
 from toprecon.cli import main
 from toprecon.study import StudyPlan, read_hand_off
 
@@ -141,3 +144,52 @@ def test_lab_outside_a_clone_asks_for_a_folder(tmp_path, monkeypatch, capsys):
 def test_lab_refuses_a_folder_that_does_not_exist(tmp_path, capsys):
     assert main(["lab", str(tmp_path / "none")]) == 2
     assert "lab: a folder is required" in capsys.readouterr().err
+
+
+RECIPE = """
+[[samples]]
+name = "pairs"
+events = 30
+"""
+
+
+def test_generate_makes_samples_and_refuses_to_replace_others(tmp_path, capsys):
+    recipe = tmp_path / "recipe.toml"
+    recipe.write_text(RECIPE)
+    folder = tmp_path / "events"
+    arguments = ["generate", str(recipe), "--out", str(folder), "--part-size", "20"]
+    assert main(arguments) == 0
+    out, err = capsys.readouterr()
+    assert out.startswith(f"{folder / 'pairs.root'}  30 of 30 events  content ")
+    assert "pairs: 30 of 30 events" in err
+    assert main(arguments) == 0
+    assert capsys.readouterr().out == out
+    recipe.write_text(RECIPE + "seed = 5\n")
+    assert main(arguments) == 2
+    assert "allow replacing it (replace=True, --replace)" in capsys.readouterr().err
+    assert main([*arguments, "--replace"]) == 0
+    assert capsys.readouterr().out != out
+
+
+def test_generate_says_what_is_wrong_with_a_recipe(tmp_path, capsys):
+    recipe = tmp_path / "recipe.toml"
+    recipe.write_text(RECIPE.replace("events", "evnts"))
+    assert main(["generate", str(recipe), "--out", str(tmp_path / "x")]) == 2
+    assert "samples.0.evnts: unknown option" in capsys.readouterr().err
+    assert not (tmp_path / "x").exists()
+
+
+def test_only_its_own_line_is_on_the_output_of_a_generation(tmp_path):
+    """Libraries that print by themselves must not break what a program reads."""
+    require("pythia8mc")
+    recipe = tmp_path / "recipe.toml"
+    recipe.write_text(RECIPE + 'options = { simulation = "shower" }\n')
+    code = (
+        "from toprecon.cli import main\n"
+        f"main(['generate', {str(recipe)!r}, '--out', {str(tmp_path / 'out')!r}])"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", code], capture_output=True, text=True, check=True
+    )
+    assert done.stdout.count("\n") == 1
+    assert done.stdout.startswith(str(tmp_path / "out" / "pairs.root"))

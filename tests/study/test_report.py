@@ -1,0 +1,86 @@
+from __future__ import annotations
+
+import json
+
+import numpy as np
+import pytest
+
+from tests.study.numbers import leaves
+from toprecon.study import (
+    result_mapping,
+    result_text,
+    run_study,
+    sentence_of,
+)
+
+
+@pytest.fixture(scope="module")
+def result(study_files, study_plan):
+    return run_study(study_files, study_plan)
+
+
+def test_the_mapping_is_plain_data_without_nan(result):
+    data = result_mapping(result)
+    assert json.loads(json.dumps(data, allow_nan=False)) == data
+    plain = int | float | str | None
+    assert all(isinstance(value, plain) for _, value in leaves(data))
+
+
+def test_the_mapping_holds_the_numbers_of_the_result(result):
+    data = result.to_mapping()
+    afb = data["by_helicity"]["LR"]["afb"]
+    a = result.by_helicity["LR"].asymmetry
+    assert afb["reconstructed"]["value"] == a.reconstructed.value
+    assert afb["reconstructed"]["error"] == a.reconstructed.error
+    flow = data["beams"]["cut_flow"]
+    assert [step["count"] for step in flow] == result.cut_flow.counts.tolist()
+    matrix = data["beams"]["migration"]["counts"]
+    assert np.array_equal(matrix, result.migration.counts)
+
+
+def test_the_causes_add_up_to_the_shift(result):
+    for beams in (result.beams, *result.by_helicity.values()):
+        budget = result_mapping(result)["beams"]["budget"]
+        assert set(budget) == {s.name for s in beams.asymmetry.budget.steps}
+        total = sum(s.shift.value for s in beams.asymmetry.budget.steps)
+        # differences of sums of a few hundred weights
+        assert total == pytest.approx(beams.asymmetry.total_shift.value, abs=1e-12)
+
+
+def test_the_text_shows_every_beam_and_its_numbers(result):
+    text = result_text(result)
+    assert text.splitlines()[0] == "study (lepton+jets, resolved)"
+    assert "beams -0.8, +0.3; expected at 500 fb^-1" in text
+    assert "beams LR (e-L e+R)" in text
+    assert "beams RL (e-R e+L)" in text
+    assert str(result.asymmetry.reconstructed_signal) in text
+    assert text.splitlines()[-2].startswith("caution: simulated events; statistical")
+
+
+def test_one_sample_of_pure_beams_is_shown_once(study_files, study_plan):
+    plan = study_plan.with_settings({"beams.luminosity": "0"})
+    text = result_text(run_study(study_files[0], plan))
+    assert "all samples" not in text
+    assert text.count("A_FB generated") == 1
+
+
+def test_undefined_values_are_told(result):
+    import dataclasses
+
+    told = dataclasses.replace(result, undefined={"pairing.gap": 3, "pairing.chi2": 0})
+    text = result_text(told)
+    assert "3 events fail the cut on an undefined pairing.gap" in text
+    assert "undefined pairing.chi2" not in text
+
+
+def test_the_sentence_gives_counts_and_asymmetries(result):
+    sentence = sentence_of(result.beams)
+    a = result.asymmetry
+    assert "expected events selected" in sentence
+    assert str(a.generated_selected).replace("+-", "±") in sentence
+    assert "+-" not in sentence
+
+
+def test_the_result_in_one_line(result):
+    assert str(result).startswith("study: A_FB generated ")
+    assert "\n" not in str(result)
