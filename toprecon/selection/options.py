@@ -30,10 +30,18 @@ class SelectionOptions(Options):
     )
     max_jets: int | None = option(None, "most jets; no limit if absent", low=0)
     btag_high: float = option(
-        0.6, "the highest b score must be above this", low=0, high=1, step=0.01
+        0.6,
+        "the highest b score must be above this; 0: no condition",
+        low=0,
+        high=1,
+        step=0.01,
     )
     btag_low: float = option(
-        0.25, "the second highest b score must be above this", low=0, high=1, step=0.01
+        0.25,
+        "the second highest b score must be above this; 0: none",
+        low=0,
+        high=1,
+        step=0.01,
     )
 
     @model_validator(mode="after")

@@ -123,15 +123,17 @@ def select(
     energetic = options.min_lepton_energy <= events.leptons.E
     n_leptons = ak.to_numpy(ak.sum(energetic, axis=1))
     scores = _two_highest(events.jets.btag)
-    steps: tuple[tuple[str, Any], ...] = (
+    steps: list[tuple[str, Any]] = [
         (_counted(required.n_leptons, "lepton"), n_leptons == required.n_leptons),
         (f"at least {required.min_jets} jets", n_jets >= required.min_jets),
-        (f"highest b score > {options.btag_high:g}", scores[0] > options.btag_high),
-        (f"second b score > {options.btag_low:g}", scores[1] > options.btag_low),
-    )
+    ]
     if required.max_jets is not None:
         most = (f"at most {required.max_jets} jets", n_jets <= required.max_jets)
-        steps = (*steps[:2], most, *steps[2:])
+        steps.append(most)
+    limits = (("highest", options.btag_high), ("second", options.btag_low))
+    for (word, limit), score in zip(limits, scores, strict=True):
+        if limit > 0:  # 0 asks for nothing, not even for a jet
+            steps.append((f"{word} b score > {limit:g}", score > limit))
     stage = np.zeros(len(events), dtype=np.uint8)
     for index, (_, passes) in reversed(list(enumerate(steps))):
         stage[~passes] = index + 1

@@ -20,17 +20,27 @@ from typing import Any, Self
 import tomli_w
 from pydantic import field_validator, model_validator
 
+from toprecon.boosted import OBSERVABLES as BOOSTED_OBSERVABLES
+from toprecon.boosted import BoostedOptions
 from toprecon.errors import InputError, OptionError, nearest
-from toprecon.events import Branch, Channel, Observable, find_observable
+from toprecon.events import Channel, Observable, find_observable
 from toprecon.migration import MigrationOptions
 from toprecon.options import Options, option
+from toprecon.pairing import FIT_OBSERVABLES, FitOptions, PairingOptions
 from toprecon.pairing import OBSERVABLES as PAIRING_OBSERVABLES
-from toprecon.pairing import PairingOptions
 from toprecon.selection import OBSERVABLES as SELECTION_OBSERVABLES
 from toprecon.selection import SelectionOptions
 from toprecon.truth import TruthOptions
 
 PLAN_VERSION = 1
+
+
+class BranchChoice(StrEnum):
+    """Which reconstruction is used."""
+
+    RESOLVED = "resolved"
+    BOOSTED = "boosted"
+    PER_EVENT = "per event"
 
 
 class Direction(StrEnum):
@@ -53,17 +63,12 @@ class StudyOptions(Options):
 
     name: str = option("study", "name, used in titles and files")
     channel: Channel = option(Channel.LEPTON_JETS, "decay channel reconstructed")
-    branch: str = option("resolved", "reconstruction: 'resolved' jets")
+    branch: BranchChoice = option(
+        BranchChoice.RESOLVED,
+        "jets are paired ('resolved'), tops are fat jets ('boosted'), or 'per event': "
+        "boosted where the fat jet of every hadronic top is tagged, else resolved",
+    )
     version: int = option(PLAN_VERSION, "version of the plan's form")
-
-    @field_validator("branch")
-    @classmethod
-    def _known_branch(cls, value: str) -> str:
-        known = {b.name.lower() for b in Branch} - {"none", "boosted"}
-        if value not in known:
-            msg = f"must be one of {', '.join(sorted(known))}; got {value!r}"
-            raise ValueError(msg)
-        return value
 
     @field_validator("version")
     @classmethod
@@ -135,6 +140,12 @@ class StudyPlan(Options):
     )
     pairing: PairingOptions = option(
         None, "how jets are paired", factory=PairingOptions
+    )
+    fit: FitOptions = option(
+        None, "constrained fit of the paired jets", factory=FitOptions
+    )
+    boosted: BoostedOptions = option(
+        None, "how tops are found as fat jets", factory=BoostedOptions
     )
     truth: TruthOptions = option(
         None, "when an event counts as matched and as signal", factory=TruthOptions
@@ -335,9 +346,22 @@ class StudyPlan(Options):
         return _hash(self.to_mapping())
 
 
-RECONSTRUCT_SECTIONS = ("study", "selection", "pairing", "truth", "angle")
+RECONSTRUCT_SECTIONS = (
+    "study",
+    "selection",
+    "pairing",
+    "fit",
+    "boosted",
+    "truth",
+    "angle",
+)
 
-OBSERVABLES: tuple[Observable, ...] = (*SELECTION_OBSERVABLES, *PAIRING_OBSERVABLES)
+OBSERVABLES: tuple[Observable, ...] = (
+    *SELECTION_OBSERVABLES,
+    *PAIRING_OBSERVABLES,
+    *FIT_OBSERVABLES,
+    *BOOSTED_OBSERVABLES,
+)
 """Every observable a cut can use."""
 
 

@@ -1,7 +1,7 @@
 """The expensive stage: events in, event table out.
 
 The order of the steps is written here and nowhere else:
-selection -> pairing -> truth -> one row per event.
+selection -> pair of tops in the branch of the plan -> truth -> one row per event.
 """
 
 from __future__ import annotations
@@ -14,25 +14,16 @@ from numpy.typing import NDArray
 
 from toprecon import __version__, kinematics
 from toprecon.events import (
-    Branch,
     EventTable,
-    Status,
     components,
     has_truth,
     samples_of,
     validate_events,
 )
-from toprecon.pairing import build, pair
 from toprecon.selection import select
-from toprecon.study.plan import Direction, Frame, StudyPlan
-from toprecon.truth import (
-    classify,
-    closest_assignment,
-    hadronic_sides,
-    signal_region,
-    sqrt_s_prime,
-    true_sign,
-)
+from toprecon.study.branches import is_signal_process, reconstruct_branch
+from toprecon.study.plan import Frame, StudyPlan
+from toprecon.truth import hadronic_sides, signal_region, sqrt_s_prime
 
 FloatArray = NDArray[np.float64]
 
@@ -55,55 +46,24 @@ def reconstruct(events: ak.Array, plan: StudyPlan) -> EventTable:
     validate_events(events)
     channel = plan.study.channel
     selection = select(events, plan.selection, channel=channel)
-    tops = pair(events, plan.pairing, channel=channel)
-    samples = samples_of(events)
-    process = np.array([s.is_signal_process for s in samples], dtype=bool)
-    sample = ak.to_numpy(events.sample)
-    is_signal_process = process[sample]
-    truth_known = has_truth(events)
-    is_signal = (
-        is_signal_process
-        & truth_known
-        & signal_region(events, plan.truth, channel=channel)
-    )
-    matching = closest_assignment(events, channel=channel)
-    matched = truth_known & (matching.angle < plan.truth.match_angle)
-    pairing_class = classify(
-        ak.to_numpy(tops.assignment),
-        matching.assignment,
-        has_truth=truth_known,
-        is_signal_process=is_signal_process,
-        matched=matched,
-        channel=channel,
-    )
-    status = ak.to_numpy(tops.status).astype(np.uint8)
-    reco = measured_cosine(tops, plan)
-    truth_says = true_sign(
-        events, tops, channel=channel, matching=matching, options=plan.truth
-    )
-    chosen = reco * truth_says
-    closest = measured_cosine(
-        build(events, matching.assignment, plan.pairing, channel=channel), plan
-    )
+    branch = reconstruct_branch(events, plan)
+    inside = signal_region(events, plan.truth, channel=channel)
     columns: dict[str, Any] = {
         "id": ak.to_numpy(events.id),
-        "sample": sample,
+        "sample": ak.to_numpy(events.sample),
         "weight": ak.to_numpy(events.weight),
-        "is_signal": is_signal,
+        "is_signal": is_signal_process(events) & has_truth(events) & inside,
         "stage": selection.stage,
-        "status": status,
-        "branch": np.where(status == Status.OK, Branch.RESOLVED, Branch.NONE),
-        "pairing_class": pairing_class,
+        **branch.columns,
         **true_cosines(events, plan),
-        "cos_theta_closest": np.where(matched, closest, np.nan),
-        "cos_theta_chosen": np.where(truth_known & is_signal_process, chosen, np.nan),
-        "cos_theta_reco": reco,
     }
-    columns.update(_observables(selection.observables, len(events)))
-    columns.update(_observables(tops.observables, len(events)))
+    for name in selection.observables.fields:
+        values = ak.to_numpy(selection.observables[name])
+        columns[name] = values.astype(np.float32)
+    columns.update(branch.observables)
     return EventTable(
         columns,
-        samples,
+        samples_of(events),
         selection.steps,
         {
             "plan": plan.reconstruct_settings,
@@ -111,38 +71,6 @@ def reconstruct(events: ak.Array, plan: StudyPlan) -> EventTable:
             "version": __version__,
         },
     )
-
-
-def measured_cosine(tops: ak.Array, plan: StudyPlan) -> FloatArray:
-    """Return cos(theta) of the top from reconstructed pairs.
-
-    Parameters
-    ----------
-    tops : ak.Array, shape (E,)
-        Reconstructed pairs; top and antitop as the measured charges say.
-    plan : StudyPlan
-        Its section ``[angle]`` gives direction and frame.
-
-    Returns
-    -------
-    array, shape (E,)
-        In [-1, 1]; NaN where there is no pair. The antitop's direction counts with
-        the opposite sign. With ``difference``, and where both sides are hadronic, the
-        direction is that of p(top) - p(antitop), so that both count.
-    """
-    top, antitop = components(tops.top), components(tops.antitop)
-    if plan.angle.frame is Frame.PAIR:
-        pair_momentum = top + antitop
-        top = kinematics.to_rest_frame(top, pair_momentum)
-        antitop = kinematics.to_rest_frame(antitop, pair_momentum)
-    both = kinematics.cos_theta(top - antitop)
-    if plan.angle.direction is Direction.DIFFERENCE:
-        return both
-    side = ak.to_numpy(tops.hadronic_side).astype(np.int8)
-    if plan.angle.direction is Direction.LEPTONIC:
-        side = -side
-    from_top, from_antitop = kinematics.cos_theta(top), -kinematics.cos_theta(antitop)
-    return np.select([side > 0, side < 0], [from_top, from_antitop], both)
 
 
 def true_cosines(events: ak.Array, plan: StudyPlan) -> dict[str, FloatArray]:
@@ -187,12 +115,3 @@ def true_cosines(events: ak.Array, plan: StudyPlan) -> dict[str, FloatArray]:
         "cos_theta_true_hadronic": hadronic,
         "sqrt_s_prime": sqrt_s_prime(events),
     }
-
-
-def _observables(record: ak.Array, n: int) -> dict[str, NDArray[np.float32]]:
-    """Columns of observables; a value beyond float32 becomes infinite, as it should."""
-    with np.errstate(over="ignore"):
-        return {
-            name: ak.to_numpy(record[name]).astype(np.float32).reshape(n)
-            for name in record.fields
-        }
