@@ -30,7 +30,7 @@ def flip_figure(
         probabilities of both hemispheres.
     """
     figure = style.blank(figure, (7.2, 2.8))
-    axes = figure.add_axes((0.11, 0.2, 0.86, 0.64))
+    axes = figure.add_axes((0.105, 0.235, 0.87, 0.62))
     binning = result.flip_bins
     values = np.array([m.value for m in result.flip_fractions])
     errors = np.array([m.error for m in result.flip_fractions])
@@ -40,13 +40,14 @@ def flip_figure(
     )  # fmt: skip
     axes.set_xlim(0, 1)
     axes.set_ylim(0, max(0.05, 1.15 * float(np.nanmax(values + errors, initial=0.01))))
-    axes.set_xlabel("|cos θ| generated")
-    axes.set_ylabel("fraction flipped")
+    axes.set_xlabel("generated |cos θ|")
+    axes.set_ylabel("share in the wrong one")
     f = result.flips
     style.tidy(axes)
     style.heading(
-        axes, f"forward to backward {style.pm(f.forward_to_backward)},  backward to forward "
-        f"{style.pm(f.backward_to_forward)}"
-    )  # fmt: skip
+        axes,
+        f"wrong hemisphere: forward tops {style.pm(f.forward_to_backward)}, "
+        f"backward {style.pm(f.backward_to_forward)}",
+    )
     style.small_print(figure, caption)
     return figure

@@ -36,8 +36,9 @@ def matrix_figure(
     -------
     Figure
         Cells: per cent of the selected events of a generated bin; rows add up to 100.
-        Beside: efficiency of every generated bin. Below: purity of every
-        reconstructed bin, for equal binnings.
+        Beside: efficiency of every generated bin. Below: purity (share of a
+        reconstructed bin that was generated there) and stability (share of a
+        generated bin that stays there), for equal binnings.
     """
     figure = style.blank(figure, (7.2, 5.6))
     grid = figure.add_gridspec(
@@ -50,25 +51,32 @@ def matrix_figure(
     axes.pcolormesh(reco, true, np.nan_to_num(shares), cmap=SHADES, vmin=0, vmax=1)
     if max(shares.shape) <= MOST_LABELS:
         _numbers(axes, matrix)
-    axes.plot([-1, 1], [1, -1], color=style.FAINT, linewidth=0.8, linestyle=":")
     axes.set(xlim=(reco[0], reco[-1]), ylim=(true[0], true[-1]))
     axes.set_ylabel("generated cos θ")
-    style.heading(axes, "per cent of the selected events of a generated bin")
+    style.heading(axes, "where the selected events of a generated bin land [%]")
     beside = figure.add_subplot(grid[0, 1], sharey=axes)
     beside.stairs(
-        100 * matrix.efficiency, true, orientation="horizontal", color="#0072b2",
+        100 * matrix.efficiency, true, orientation="horizontal", color=style.BLUE,
         fill=True, alpha=0.35,
     )  # fmt: skip
     beside.set(xlim=(0, 100), ylim=(true[0], true[-1]))
-    beside.set_xlabel("efficiency [%]")
+    style.heading(beside, "efficiency [%]")
     beside.tick_params(labelleft=False)
     below = figure.add_subplot(grid[1, 0], sharex=axes)
     if matrix.has_equal_bins:
-        below.stairs(100 * matrix.purity, reco, color="#0072b2", fill=True, alpha=0.35)
-        below.set_ylabel("purity [%]")
+        purity, stability = 100 * matrix.purity, 100 * matrix.stability
+        below.stairs(purity, reco, baseline=None, label="purity", **style.SIGNAL_ONLY)
+        below.stairs(
+            stability, reco, baseline=None, label="stability", **style.SELECTED
+        )
+        below.set_ylabel("[%]")
         below.set_ylim(0, 100)
+        below.legend(
+            loc="center left", bbox_to_anchor=(1.02, 0.5), frameon=False, fontsize=9,
+            labelcolor=style.INK,
+        )  # fmt: skip
     else:
-        below.stairs(matrix.counts.sum(axis=0), reco, color="#0072b2")
+        below.stairs(matrix.counts.sum(axis=0), reco, color=style.BLUE)
         below.set_ylabel("selected")
     below.set_xlabel("reconstructed cos θ")
     axes.tick_params(labelbottom=False)
@@ -89,5 +97,5 @@ def _numbers(axes: Any, matrix: MigrationMatrix) -> None:
             text = f"{100 * share:.0f}" if share >= 0.0995 else f"{100 * share:.1f}"
             axes.text(
                 x, y, text, ha="center", va="center", fontsize=8.5,
-                color="#ffffff" if share > 0.42 else style.INK,
+                color=style.readable_on(SHADES(share)),
             )  # fmt: skip

@@ -113,6 +113,11 @@ class LiveStudy:
         return self._source
 
     @property
+    def can_reconstruct(self) -> bool:
+        """Whether there are events, so that the reconstruct part can be edited."""
+        return not isinstance(self._source, EventTable)
+
+    @property
     def error(self) -> Exception | None:
         """Why there is no result for the newest plan, if so."""
         return self._error

@@ -1,4 +1,4 @@
-"""What every part of the desk shares: errors in one line, pictures, and an end."""
+"""What every part of the desk shares: one study, errors in one line, and an end."""
 
 from __future__ import annotations
 
@@ -6,66 +6,373 @@ import contextlib
 import html
 import os
 from collections.abc import Callable, Iterator
-from typing import Any
+from typing import Any, ClassVar
 
 import ipywidgets
 from matplotlib.figure import Figure
 
 from toprecon.errors import TopreconError
-from toprecon.figures import png
+from toprecon.figures import LiveFigure, png
+from toprecon.study import BeamsResult, LiveStudy, StudyPlan, sentence_of
 
 STRICT_VARIABLE = "TOPRECON_STRICT"
 """Set to 1 in tests: errors of callbacks are raised as well as shown."""
 
 STYLE = """<style>
-.noUi-handle:focus {outline: 2px solid #0072b2}
-.toprecon-title {font-weight: 600; margin: 4px 0}
-.toprecon-status {color: #22262b; margin: 2px 0; line-height: 1.35}
-.toprecon-error {color: #8a2a00; margin: 2px 0}
-.toprecon-help {color: #5c636a; font-size: 90%; line-height: 1.3}
+.noUi-handle:focus {outline: 2px solid #0072b2; outline-offset: 1px}
+.toprecon-title {font-weight: 600; margin: 2px 0; line-height: 1.4}
+.toprecon-status {margin: 2px 0; line-height: 1.4}
+.toprecon-error {background: #fdf1e7; color: #7a2e00; margin: 2px 0; padding: 2px 8px;
+  border-left: 3px solid #d55e00; line-height: 1.4}
+.toprecon-help {opacity: 0.75; font-size: 90%; line-height: 1.35}
+.toprecon-table td, .toprecon-table th {padding: 1px 12px 1px 0; text-align: left}
+.toprecon pre {line-height: 1.35; margin: 4px 0; white-space: pre-wrap}
 </style>"""
+
+BEAMS = {"plan": "of the plan", "LR": "e-L e+R", "RL": "e-R e+L"}
+"""Settings of the beams that results are there for, as people read them."""
 
 
 class ErrorLine:
-    """Where errors appear: one sentence, announced to screen readers."""
+    """Where errors appear: one sentence, announced to screen readers.
 
-    def __init__(self) -> None:
+    Parameters
+    ----------
+    live : LiveStudy
+        The study whose plan the errors are about.
+    """
+
+    def __init__(self, live: LiveStudy) -> None:
+        self._live = live
+        self._text = ""
+        self._plan: StudyPlan | None = None
         self.widget = ipywidgets.HTML()
         self.strict = os.environ.get(STRICT_VARIABLE) == "1"
 
+    @property
+    def text(self) -> str:
+        """The message shown; empty if there is none."""
+        return self._text
+
     def show(self, message: str) -> None:
         """Show a message; an empty one clears the line."""
-        text = html.escape(message)
+        self._plan = self._live.plan
+        if message == self._text:
+            return
+        self._text = message
         self.widget.value = (
-            f'<p class="toprecon-error" role="alert">{text}</p>' if text else ""
+            f'<p class="toprecon-error" role="alert">{html.escape(message)}</p>'
+            if message
+            else ""
         )
+
+    def forget_with_any_result(self) -> None:
+        """Let the next result clear the message, also one of the same plan."""
+        self._plan = None
+
+    def outlived(self, plan: StudyPlan) -> None:
+        """Forget the message once a plan newer than it has its result."""
+        if plan is not self._plan:
+            self.show("")
+
+    def show_error(self, error: Exception) -> None:
+        """Show an error in one sentence; other people's errors with their type."""
+        known = isinstance(error, TopreconError)
+        self.show(str(error) if known else f"{type(error).__name__}: {error}")
 
     @contextlib.contextmanager
     def guard(self) -> Iterator[None]:
-        """Show what goes wrong inside; raise it too in strict mode."""
+        """Show what goes wrong inside; raise what nobody foresaw in strict mode."""
         try:
             yield
-        except TopreconError as error:
-            self.show(str(error))
         except Exception as error:
-            self.show(f"{type(error).__name__}: {error}")
-            if self.strict:
+            self.show_error(error)
+            if self.strict and not isinstance(error, TopreconError):
                 raise
 
 
 class Picture:
-    """One figure in one image widget of fixed width."""
+    """One figure in one image widget of fixed width.
+
+    Parameters
+    ----------
+    width : int
+        Width on the screen [px]; the height follows from the figure.
+    """
 
     def __init__(self, width: int = 720) -> None:
-        self.figure: Figure | None = None
+        self._width = width
+        self._kept: dict[str, Figure] = {}
         self.widget = ipywidgets.Image(
-            format="png", layout=ipywidgets.Layout(max_width=f"{width}px")
+            format="png",
+            layout=ipywidgets.Layout(
+                width=f"{width}px", max_width="100%", object_fit="contain"
+            ),
         )
 
-    def draw(self, make: Callable[[Figure | None], Figure]) -> None:
-        """Draw into the same figure again and send the picture."""
-        self.figure = make(self.figure)
-        self.widget.value = png(self.figure)
+    def draw(self, name: str, make: Callable[[Figure | None], Figure]) -> None:
+        """Draw a figure, again into the one kept under its name, and show it."""
+        self._kept[name] = figure = make(self._kept.get(name))
+        self.widget.value = png(figure)
+
+    def show(self, live: LiveFigure) -> None:
+        """Show the present frame of a figure that follows a control."""
+        self.widget.value = live.png()
+
+
+class Shared:
+    """One study with its errors, beams and status line, shared by panels.
+
+    Parameters
+    ----------
+    source : LiveStudy or whatever a LiveStudy can be made of
+        A live study given is left running when the panels close.
+    plan : StudyPlan, optional
+        The default plan if absent.
+    synchronous : bool
+        Work in the calling thread.
+    layout, catalogue : optional
+        How to read files.
+    """
+
+    def __init__(
+        self,
+        source: Any,
+        plan: StudyPlan | None = None,
+        *,
+        synchronous: bool = False,
+        layout: Any = None,
+        catalogue: Any = None,
+    ) -> None:
+        self._owns = not isinstance(source, LiveStudy)
+        self.live: LiveStudy = (
+            LiveStudy(
+                source,
+                plan,
+                synchronous=synchronous,
+                layout=layout,
+                catalogue=catalogue,
+            )
+            if self._owns
+            else source
+        )
+        if not self._owns and plan is not None:
+            self.live.set_plan(plan)
+        self.errors = ErrorLine(self.live)
+        self.status = ipywidgets.HTML(layout=ipywidgets.Layout(width="auto"))
+        self._said = ""
+        self.beams = ipywidgets.Dropdown(
+            description="beams",
+            options=[(BEAMS["plan"], "plan")],
+            value="plan",
+            style={"description_width": "3.5em"},
+            layout=ipywidgets.Layout(width="14em", flex="0 0 auto"),
+        )
+        self.bar = ipywidgets.IntProgress(layout=ipywidgets.Layout(width="22em"))
+        self.stop = ipywidgets.Button(
+            description="stop", tooltip="stop reconstructing; any change goes on"
+        )
+        self.stop.on_click(lambda _: self.live.stop())
+        self.progress = ipywidgets.HBox(
+            [self.bar, self.stop], layout=ipywidgets.Layout(display="none")
+        )
+        self._panels: list[Panel] = []
+        self.beams.observe(lambda _: self.refresh(), names="value")
+        self._leave = self.live.on_change(lambda _: self.refresh())
+        self.say("working ...")
+
+    @property
+    def header(self) -> list[Any]:
+        """Widgets that belong above the panels."""
+        return [
+            ipywidgets.HTML(STYLE),
+            ipywidgets.HBox([self.beams, self.status]),
+            self.progress,
+            self.errors.widget,
+        ]
+
+    @property
+    def result(self) -> BeamsResult:
+        """The newest result for the beams chosen."""
+        result = self.live.result
+        return result.by_helicity.get(self.beams.value, result.beams)
+
+    @property
+    def caption(self) -> str:
+        """Small print of every figure: what its numbers rest on."""
+        result = self.live.result
+        names = [sample.name for sample in result.samples]
+        shown = ", ".join(names[:3]) + (
+            f" and {len(names) - 3} more" if names[3:] else ""
+        )
+        beams = self.beams.value
+        polarised = "" if beams == "plan" else f" · beams {BEAMS[beams]}"
+        return f"simulated events: {shown}{polarised} · statistical errors only"
+
+    @property
+    def beams_code(self) -> str:
+        """Python that picks the beams chosen from ``result``."""
+        name = self.beams.value
+        return "result.beams" if name == "plan" else f'result.by_helicity["{name}"]'
+
+    def join(self, panel: Panel) -> None:
+        """Let a panel follow the study."""
+        self._panels.append(panel)
+
+    def refresh(self) -> None:
+        """Show the newest result, or why there is none, in every panel on view."""
+        with self.live.lock, self.errors.guard():
+            self._show_progress()
+            if self.live.error is not None:
+                self.errors.show_error(self.live.error)
+                self.errors.forget_with_any_result()
+                self.say("no result for these settings")
+                return
+            if self.live.shown_plan is None:
+                self.say("working ...")
+                return
+            self._offer_beams()
+            for panel in self._panels:
+                if panel.on_view:
+                    panel.draw()
+            self.errors.outlived(self.live.shown_plan)
+            self.say(sentence_of(self.result))
+
+    def say(self, text: str) -> None:
+        """Put a sentence where screen readers announce it."""
+        if text != self._said:
+            self._said = text
+            self.status.value = (
+                '<p class="toprecon-status" role="status" aria-live="polite">'
+                f"{html.escape(text)}</p>"
+            )
+
+    def close(self) -> None:
+        """Leave the study; stop it if it was made here."""
+        self._leave()
+        if self._owns:
+            self.live.close()
+        for widget in (self.errors.widget, self.status, self.beams, self.progress):
+            close_all(widget)
+
+    def _show_progress(self) -> None:
+        """Show the bar while events are reconstructed."""
+        done, total = self.live.progress
+        running = self.live.is_busy and done < total
+        if running:
+            self.bar.max, self.bar.value = total, done
+            self.say(f"reconstructing: {done:,} of {total:,} events")
+        display = None if running else "none"
+        if self.progress.layout.display != display:
+            self.progress.layout.display = display
+
+    def _offer_beams(self) -> None:
+        """Offer the beams that the samples have."""
+        names = ["plan", *self.live.result.by_helicity]
+        choices = [(BEAMS[name], name) for name in names]
+        if list(self.beams.options) != choices:
+            value = self.beams.value if self.beams.value in names else "plan"
+            self.beams.options = choices
+            self.beams.value = value
+
+
+class Panel:
+    """One part of the desk; works alone as well.
+
+    Parameters
+    ----------
+    source : Shared, LiveStudy, or whatever a LiveStudy can be made of
+        The study shown and edited.
+    plan : StudyPlan, optional
+        The default plan if absent.
+    synchronous : bool
+        Work in the calling thread.
+    layout, catalogue : optional
+        How to read files.
+    """
+
+    title: ClassVar[str] = ""
+
+    def __init__(
+        self,
+        source: Any,
+        plan: StudyPlan | None = None,
+        *,
+        synchronous: bool = False,
+        layout: Any = None,
+        catalogue: Any = None,
+    ) -> None:
+        self._alone = not isinstance(source, Shared)
+        self.shared = (
+            Shared(
+                source,
+                plan,
+                synchronous=synchronous,
+                layout=layout,
+                catalogue=catalogue,
+            )
+            if self._alone
+            else source
+        )
+        self.on_view = self._alone
+        self._code = ipywidgets.HTML()
+        inside = [*self.build(), self._code]
+        self.widget = ipywidgets.VBox(
+            [*self.shared.header, *inside] if self._alone else inside
+        )
+        self.widget.add_class("toprecon")
+        self.shared.join(self)
+        if self._alone:
+            self.shared.refresh()
+
+    @property
+    def live(self) -> LiveStudy:
+        """The study beneath."""
+        return self.shared.live
+
+    @property
+    def errors(self) -> ErrorLine:
+        """The line of errors."""
+        return self.shared.errors
+
+    def build(self) -> list[Any]:
+        """Make the widgets, top to bottom."""
+        raise NotImplementedError
+
+    def paint(self) -> None:
+        """Show the newest result; called under the lock, with a result there."""
+        raise NotImplementedError
+
+    def python(self) -> str:
+        """Return Python, following ``result = ...``, that gives what is shown."""
+        raise NotImplementedError
+
+    def draw(self) -> None:
+        """Show the newest result and the code that gives it."""
+        self.paint()
+        if self.live.is_settled:
+            code = html.escape(f"{self.live.code()}\n{self.python()}")
+            self._code.value = (
+                f"<details><summary>the same in Python</summary><pre>{code}</pre>"
+                "</details>"
+            )
+
+    def redraw(self) -> None:
+        """Draw again after a control of this panel changed."""
+        with self.live.lock, self.errors.guard():
+            if self.on_view and self.live.shown_plan is not None:
+                self.draw()
+
+    def close(self) -> None:
+        """Free every widget, and stop the study if it was made here."""
+        if self._alone:
+            self.shared.close()
+        close_all(self.widget)
+
+    def _ipython_display_(self) -> None:
+        from IPython.display import display
+
+        display(self.widget)
 
 
 def labelled(text: str) -> Any:

@@ -1,4 +1,4 @@
-"""Cuts: a range slider with text boxes for every observable that is cut on."""
+"""Cuts: a range slider under the distribution of every observable that is cut on."""
 
 from __future__ import annotations
 
@@ -7,11 +7,16 @@ from typing import Any
 
 import ipywidgets
 
-from toprecon.study import OBSERVABLES, CutOptions, LiveStudy, Observable
-from toprecon.widgets.base import ErrorLine, close_all, helping, labelled
+from toprecon.figures import CutFigure, class_legend, png
+from toprecon.study import OBSERVABLES, Binning, CutOptions
+from toprecon.widgets.base import Panel, Picture, close_all, helping, labelled
 
 STEPS = 200
 """Steps of a slider over the range of its observable."""
+
+BINS = 50
+WIDTH = 390
+"""Width of slider and distribution [px]."""
 
 BY_NAME = {item.name: item for item in OBSERVABLES}
 
@@ -27,19 +32,22 @@ class CutRow:
         self, cut: CutOptions, change: Callable[[], None], remove: Callable[[], None]
     ) -> None:
         self.observable = BY_NAME[cut.observable]
+        self.binning = Binning.regular(BINS, *self.observable.range)
         low, high = self.observable.range
+        self.known = cut
         self._change = change
         self._quiet = False
-        values = (
-            low if cut.low is None else cut.low,
-            high if cut.high is None else cut.high,
+        values = self._ends(cut)
+        self.strip = CutFigure(
+            self.observable, self.binning, size=(WIDTH / 100, 0.92), with_axes=False
         )
+        self.picture = Picture(WIDTH)
         self.on = ipywidgets.Checkbox(
             value=cut.on,
             indent=False,
             description=self.observable.axis_label,
             tooltip=self.observable.meaning,
-            layout=ipywidgets.Layout(width="17em"),
+            layout=ipywidgets.Layout(width="auto", flex="1 1 auto"),
         )
         self.slider = ipywidgets.FloatRangeSlider(
             value=(min(max(values[0], low), high), max(min(values[1], high), low)),
@@ -47,31 +55,42 @@ class CutRow:
             max=high,
             step=(high - low) / STEPS,
             readout=False,
-            layout=ipywidgets.Layout(width="15em"),
+            layout=ipywidgets.Layout(width=f"{WIDTH}px", margin="0"),
         )
         box = {
-            "layout": ipywidgets.Layout(width="6em"),
+            "style": {"description_width": "3.2em"},
+            "layout": ipywidgets.Layout(width="11em"),
             "step": (high - low) / STEPS,
         }
-        self.low = ipywidgets.FloatText(value=values[0], tooltip="lowest kept", **box)
-        self.high = ipywidgets.FloatText(
-            value=values[1], tooltip="first value dropped", **box
+        self.low = ipywidgets.FloatText(
+            value=values[0], description="from", tooltip="lowest value kept", **box
         )
+        self.high = ipywidgets.FloatText(
+            value=values[1], description="below", tooltip="first value dropped",
+            **{**box, "layout": ipywidgets.Layout(width="11em")},
+        )  # fmt: skip
         self.remove = ipywidgets.Button(
-            description="remove", layout=ipywidgets.Layout(width="5em")
+            description="remove",
+            tooltip=f"take out the cut on {self.observable.label}",
+            layout=ipywidgets.Layout(width="5.5em"),
         )
         self.remove.on_click(lambda _: remove())
         self.widget = ipywidgets.VBox(
             [
                 ipywidgets.HBox([self.on, self.remove]),
-                ipywidgets.HBox([self.low, self.slider, self.high]),
+                self.picture.widget,
+                self.slider,
+                ipywidgets.HBox(
+                    [self.low, self.high],
+                    layout=ipywidgets.Layout(justify_content="space-between"),
+                ),
             ],
-            layout=ipywidgets.Layout(margin="0 0 8px 0"),
+            layout=ipywidgets.Layout(width=f"{WIDTH + 8}px", margin="0 0 10px 0"),
         )
         self.slider.observe(self._slid, names="value")
         for item in (self.low, self.high):
             item.observe(self._typed, names="value")
-        self.on.observe(lambda _: change(), names="value")
+        self.on.observe(self._switched, names="value")
 
     @property
     def limits(self) -> tuple[float | None, float | None]:
@@ -80,6 +99,31 @@ class CutRow:
         return (
             None if self.low.value <= low else self.low.value,
             None if self.high.value >= high else self.high.value,
+        )
+
+    def follow(self, cut: CutOptions) -> None:
+        """Take a cut over that was not made with these controls."""
+        if cut == self.known:
+            return
+        self.known = cut
+        self._quiet = True
+        try:
+            self.on.value = cut.on
+            self.low.value, self.high.value = self._ends(cut)
+            low, high = self.observable.range
+            self.slider.value = (
+                min(max(self.low.value, low), high),
+                max(min(self.high.value, high), low),
+            )
+        finally:
+            self._quiet = False
+
+    def _ends(self, cut: CutOptions) -> tuple[float, float]:
+        """Limits of a cut, no limit being an end of the slider."""
+        low, high = self.observable.range
+        return (
+            low if cut.low is None else cut.low,
+            high if cut.high is None else cut.high,
         )
 
     def _slid(self, event: Any) -> None:
@@ -95,6 +139,10 @@ class CutRow:
         finally:
             self._quiet = False
         self._change()
+
+    def _switched(self, _: Any) -> None:
+        if not self._quiet:
+            self._change()
 
     def _typed(self, _: Any) -> None:
         if self._quiet:
@@ -112,38 +160,83 @@ class CutRow:
         self._change()
 
 
-class CutControls:
-    """All cuts of the plan, and a way to add one."""
+class CutsPanel(Panel):
+    """All cuts of the plan, the distribution behind each, and a way to add one."""
 
-    def __init__(self, live: LiveStudy, errors: ErrorLine) -> None:
-        self._live = live
-        self._errors = errors
+    title = "Cuts"
+
+    def build(self) -> list[Any]:
+        """Make the widgets, top to bottom."""
         self.rows: dict[str, CutRow] = {}
+        self._shown: dict[str, Any] = {}
+        self._classes: tuple[str, ...] = ()
+        self.legend = ipywidgets.Image(
+            format="png", layout=ipywidgets.Layout(width=f"{WIDTH}px")
+        )
         self.add = ipywidgets.Dropdown(
             options=[("add a cut on ...", ""), *_choices()],
             value="",
-            layout=ipywidgets.Layout(width="24em"),
+            layout=ipywidgets.Layout(width=f"{WIDTH}px"),
         )
         self.add.observe(self._added, names="value")
         self._box = ipywidgets.VBox([])
-        self.widget = ipywidgets.VBox(
-            [
-                labelled("Cuts"),
-                self._box,
-                self.add,
-                helping("low limit inclusive, high limit exclusive; an end of the "
-                        "slider is no limit"),
-            ]
-        )  # fmt: skip
-        for cut in live.plan.cuts:
+        for cut in self.live.plan.cuts:
             self._make(cut)
-        self._show()
+        self._arrange()
+        return [
+            labelled("Cuts"),
+            self._box,
+            self.legend,
+            self.add,
+            helping("behind each slider: all other cuts applied"),
+            helping("the end of a slider is no limit"),
+        ]
 
-    @property
-    def observable(self) -> Observable:
-        """The observable cut on last, or the chi-square of the pairing."""
-        names = list(self.rows)
-        return BY_NAME[names[-1] if names else "pairing.chi2"]
+    def paint(self) -> None:
+        """Show the limits; once the study settles, the distributions too."""
+        self._follow_plan()
+        for name, row in self.rows.items():
+            limits = row.limits if row.on.value else (None, None)
+            if self.live.is_settled or name not in self._shown:
+                classes = self.live.distribution(
+                    name, row.binning, beams=self.shared.beams.value
+                )
+                row.strip.update(classes, low=limits[0], high=limits[1])
+                self._show_legend(classes)
+            elif self._shown[name] != limits:
+                row.strip.move(*limits)
+            else:
+                continue
+            self._shown[name] = limits
+            row.picture.show(row.strip)
+
+    def python(self) -> str:
+        """Return Python that gives what is shown."""
+        return f"print({self.shared.beams_code}.cut_flow)"
+
+    def _show_legend(self, classes: dict[str, Any]) -> None:
+        """Name the classes that the distributions have."""
+        names = tuple(dict.fromkeys([*self._classes, *classes]))
+        if names != self._classes:
+            self._classes = names
+            self.legend.value = png(class_legend(names, width=WIDTH / 100))
+
+    def _follow_plan(self) -> None:
+        """Add and drop rows for cuts that others put into or took out of the plan."""
+        cuts = {cut.observable: cut for cut in self.live.plan.cuts}
+        for name, row in self.rows.items():
+            if name in cuts:
+                row.follow(cuts[name])
+        if list(cuts) == list(self.rows):
+            return
+        for name in [name for name in self.rows if name not in cuts]:
+            close_all(self.rows.pop(name).widget)
+            self._shown.pop(name, None)
+        for name, cut in cuts.items():
+            if name not in self.rows:
+                self._make(cut)
+        self.rows = {name: self.rows[name] for name in cuts}
+        self._arrange()
 
     def _added(self, event: Any) -> None:
         name = event["new"]
@@ -151,10 +244,10 @@ class CutControls:
             return
         self.add.value = ""
         if name not in self.rows:
-            with self._errors.guard():
+            with self.live.lock, self.errors.guard():
                 self._make(CutOptions(observable=name))
-                self._show()
-                self._live.set_cut(name)
+                self._arrange()
+                self.live.set_cut(name)
 
     def _make(self, cut: CutOptions) -> None:
         name = cut.observable
@@ -163,20 +256,22 @@ class CutControls:
         )
 
     def _changed(self, name: str) -> None:
-        with self._errors.guard():
+        with self.errors.guard():
             row = self.rows[name]
             low, high = row.limits
-            self._live.set_cut(name, low, high, on=row.on.value)
+            cut = CutOptions(observable=name, low=low, high=high, on=row.on.value)
+            row.known = cut  # so that the answer does not move what is being moved
+            self.live.set_cut(name, low, high, on=cut.on)
 
     def _removed(self, name: str) -> None:
-        row = self.rows.pop(name)
-        self._show()
-        close_all(row.widget)
-        with self._errors.guard():
-            cuts = [c for c in self._live.plan.cuts if c.observable != name]
-            self._live.configure(cuts=tuple(cuts))
+        with self.live.lock, self.errors.guard():
+            row = self.rows.pop(name)
+            self._shown.pop(name, None)
+            self._arrange()
+            close_all(row.widget)
+            self.live.remove_cut(name)
 
-    def _show(self) -> None:
+    def _arrange(self) -> None:
         self._box.children = [row.widget for row in self.rows.values()]
 
 

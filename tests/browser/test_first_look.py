@@ -1,0 +1,127 @@
+"""The first notebook in a real page: run it, move controls, look at what changes."""
+
+from __future__ import annotations
+
+import os
+import re
+
+import pytest
+
+from tests.require import require
+
+pytestmark = [pytest.mark.browser, pytest.mark.timeout(240)]
+
+PATH = "notebooks/01_first_look.ipynb"
+
+
+@pytest.fixture
+def desk(notebook):
+    """The page of the first notebook after all its cells ran."""
+    notebook.open(PATH).run_all()
+    page = notebook.page
+    page.locator("img.widget-image").first.scroll_into_view_if_needed()
+    yield page
+    assert notebook.troubles == []
+    assert page.locator("[data-mime-type*='stderr']").count() == 0
+
+
+@pytest.fixture
+def expect():
+    return require("playwright.sync_api").expect
+
+
+def status_of(page):
+    return page.locator("p.toprecon-status[role=status]").first
+
+
+def picture_of(page):
+    """Picture of the panel on view: the last one of the desk."""
+    return page.locator("img.widget-image").last
+
+
+def photograph(page, name):
+    if folder := os.environ.get("TOPRECON_SCREENSHOTS"):
+        page.wait_for_timeout(700)
+        page.screenshot(path=f"{folder}/{name}.png")
+
+
+def test_slider_moved_by_keyboard_changes_figure_and_numbers(desk, expect):
+    status, picture = status_of(desk), picture_of(desk)
+    expect(status).to_contain_text("shift of the signal")
+    before, old = status.inner_text(), picture.get_attribute("src")
+    desk.locator(".noUi-handle-upper").first.focus()
+    for _ in range(4):
+        desk.keyboard.press("PageDown")
+    box = desk.get_by_role("spinbutton", name="below", exact=True)
+    expect(box).to_have_value("45")
+    expect(picture).not_to_have_attribute("src", old)
+    expect(status).not_to_have_text(before)
+    assert re.search(r"reconstructed 0\.\d+ ± 0\.\d+", status.inner_text())
+    outline = desk.evaluate(
+        "() => getComputedStyle(document.activeElement).outlineStyle"
+    )
+    assert outline == "solid"
+
+
+def test_number_typed_into_the_box_moves_the_cut(desk, expect):
+    before = status_of(desk).inner_text()
+    box = desk.get_by_role("spinbutton", name="below", exact=True)
+    box.fill("12.5")
+    box.press("Enter")
+    expect(status_of(desk)).not_to_have_text(before)
+    expect(desk.locator(".toprecon-error")).to_have_count(0)
+
+
+def test_wrong_setting_is_one_sentence_and_goes_away(desk, expect):
+    low = desk.get_by_role("spinbutton", name="from", exact=True)
+    low.fill("60")
+    low.press("Enter")
+    high = desk.get_by_role("spinbutton", name="below", exact=True)
+    high.fill("12")
+    high.press("Enter")
+    error = desk.locator(".toprecon-error[role=alert]")
+    expect(error).to_contain_text("low must not be above high; got low=60.0, high=12.0")
+    photograph(desk, "error")
+    low.fill("0")
+    low.press("Enter")
+    expect(error).to_have_count(0)
+
+
+def test_every_panel_shows_its_figure(desk, expect):
+    old = picture_of(desk).get_attribute("src")
+    for title in ("Pairing", "Migration", "Events", "Angle"):
+        button = desk.get_by_role("button", name=title, exact=True)
+        button.focus()
+        desk.keyboard.press("Enter")
+        picture = picture_of(desk)
+        expect(picture).not_to_have_attribute("src", old)
+        old = picture.get_attribute("src")
+        photograph(desk, f"panel {title}")
+    for view in ("causes of the shift", "wrong hemisphere"):
+        desk.get_by_role("button", name=view).click()
+        expect(picture_of(desk)).not_to_have_attribute("src", old)
+        old = picture_of(desk).get_attribute("src")
+        photograph(desk, f"view {view}")
+
+
+def test_cut_is_added_from_the_list_and_beams_are_chosen(desk, expect):
+    desk.get_by_role("combobox").filter(has_text="add a cut on").select_option(
+        label="hadronic W mass [GeV]"
+    )
+    expect(desk.get_by_label("hadronic W mass [GeV]")).to_be_checked()
+    expect(desk.locator(".noUi-handle-upper")).to_have_count(2)
+    before = status_of(desk).inner_text()
+    desk.get_by_label("beams", exact=True).select_option(label="e-L e+R")
+    expect(status_of(desk)).not_to_have_text(before)
+    photograph(desk, "two cuts")
+
+
+def test_plan_is_saved_from_the_desk(desk, expect, served):
+    desk.get_by_role("button", name="Hand-off", exact=True).click()
+    desk.get_by_role("button", name="save plan").click()
+    expect(desk.get_by_text("plan saved as study_plan.toml")).to_be_visible()
+    photograph(desk, "panel Hand-off")
+    from toprecon import StudyPlan
+
+    plan = StudyPlan.load(served / "notebooks" / "study_plan.toml")
+    assert plan.cuts[0].observable == "pairing.chi2"

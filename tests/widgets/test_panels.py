@@ -1,0 +1,192 @@
+"""Panels by themselves, their settings, errors and progress."""
+
+from __future__ import annotations
+
+import pytest
+
+from tests.widgets.conftest import PLAN
+from toprecon import widgets
+from toprecon.study import Binning
+from toprecon.widgets.base import Panel
+
+PANELS = [getattr(widgets, name) for name in widgets.__all__ if name.endswith("Panel")]
+
+
+@pytest.mark.parametrize("kind", PANELS)
+def test_every_panel_works_alone_and_frees_its_widgets(events, alive, kind):
+    panel = kind(events, PLAN, synchronous=True)
+    assert "A_FB generated" in panel.shared.status.value
+    assert panel.errors.text == ""
+    panel.live.set_cut("pairing.chi2", high=9)
+    assert panel.errors.text == ""
+    assert panel.title
+    panel.close()
+    assert alive() == 0
+
+
+@pytest.mark.parametrize("kind", PANELS)
+def test_every_panel_refuses_unknown_keywords(events, kind):
+    with pytest.raises(TypeError, match="synchronus"):
+        kind(events, synchronus=True)
+
+
+def test_unforeseen_error_is_shown_with_its_type_and_raised_in_strict_mode(events):
+    class Broken(Panel):
+        def build(self):
+            return []
+
+        def paint(self):
+            raise ZeroDivisionError
+
+    with pytest.raises(ZeroDivisionError):
+        Broken(events, PLAN, synchronous=True)
+
+
+def test_unforeseen_error_is_only_shown_otherwise(events, monkeypatch):
+    monkeypatch.setenv("TOPRECON_STRICT", "0")
+
+    class Broken(Panel):
+        def build(self):
+            return []
+
+        def paint(self):
+            msg = "oops <b>"
+            raise ZeroDivisionError(msg)
+
+    panel = Broken(events, PLAN, synchronous=True)
+    assert panel.errors.text == "ZeroDivisionError: oops <b>"
+    assert "&lt;b&gt;" in panel.errors.widget.value
+    panel.close()
+
+
+def test_selection_control_changes_the_table(desk):
+    desk.view.value = "Events"
+    table = desk.table
+    controls = desk.panel.settings.by_name
+    controls["btag_high"].value = 0.9
+    assert desk.plan.selection.btag_high == 0.9
+    assert (desk.table["stage"] == 0).sum() < (table["stage"] == 0).sum()
+
+
+def test_setting_that_may_be_absent_is_a_box_that_may_be_empty(desk):
+    desk.view.value = "Events"
+    box = desk.panel.settings.by_name["max_jets"]
+    box.value = "5"
+    assert desk.plan.selection.max_jets == 5
+    box.value = "five"
+    assert (
+        desk.errors.text
+        == "selection.max_jets: must be a whole number or empty; got 'five'"
+    )
+    assert desk.plan.selection.max_jets == 5
+    box.value = ""
+    assert desk.plan.selection.max_jets is None
+    assert desk.errors.text == ""
+
+
+def test_limits_of_controls_are_those_of_the_declaration(desk):
+    control = desk.panels["Events"].settings.by_name["btag_high"]
+    assert (control.min, control.max, control.step) == (0, 1, 0.01)
+    assert control.tooltip.startswith("the highest b score must be above this")
+    energy = desk.panels["Events"].settings.by_name["min_lepton_energy"]
+    assert energy.description == "min lepton energy [GeV]"
+
+
+def test_pairing_term_can_be_switched_and_edited(desk):
+    desk.view.value = "Pairing"
+    row = desk.panel.terms.rows["top_energy"]
+
+    def term():
+        return next(t for t in desk.plan.pairing.terms if t.name == "top_energy")
+
+    row["on"].value = True
+    row["below"].value = "12"
+    assert term().on
+    assert term().below == 12
+    row["below"].value = "twelve"
+    assert "must be a number or empty; got 'twelve'" in desk.errors.text
+    assert term().below == 12
+
+
+def test_settings_changed_from_python_show_in_the_controls(desk):
+    desk.live.set_settings(
+        {
+            "selection.btag_high": 0.7,
+            "selection.max_jets": 6,
+            "pairing.cap": 5,
+            "migration.edges": [-1, 0, 1],
+            "beams.luminosity": 500.0,
+        }
+    )
+    desk.live.configure(
+        pairing=desk.plan.pairing.with_term("top_energy", on=True, target=251.5)
+    )
+    for title in desk.panels:
+        desk.view.value = title
+    selection = desk.panels["Events"].settings.by_name
+    assert selection["btag_high"].value == 0.7
+    assert selection["max_jets"].value == "6"
+    pairing = desk.panels["Pairing"]
+    assert pairing.settings.by_name["cap"].value == 5
+    assert pairing.terms.rows["top_energy"]["on"].value
+    assert pairing.terms.rows["top_energy"]["target"].value == "251.5"
+    assert desk.panels["Migration"].bins.value == 2
+    assert desk.panels["Hand-off"].settings.by_name["luminosity"].value == 500
+    assert desk.plan.migration.edges == (-1, 0, 1)
+
+
+def test_distribution_and_purity_follow_the_observable_chosen(desk):
+    desk.view.value = "Pairing"
+    desk.panel.view.value = "purity against a cut"
+    before = desk.panel.picture.widget.value
+    gap = next(
+        o
+        for o in dict(desk.panel.observable.options).values()
+        if o.name == "pairing.gap"
+    )
+    desk.panel.observable.value = gap
+    assert desk.panel.picture.widget.value != before
+    assert "pairing.gap" in desk.panel.python()
+
+
+def test_bins_of_the_matrix_can_be_chosen(desk):
+    desk.view.value = "Migration"
+    desk.panel.bins.value = 4
+    assert desk.result.migration.true_binning == Binning.regular(4, -1, 1)
+    assert "in the matrix" in desk.panel.numbers.value
+
+
+def test_samples_and_cross_sections_are_listed(desk):
+    desk.view.value = "Events"
+    name = desk.result.samples[0].name
+    assert name in desk.panel.samples.value
+    assert "<th>√s [GeV]</th>" in desk.panel.samples.value
+
+
+def test_angle_shows_further_variants_on_demand(desk):
+    before = desk.panel.picture.widget.value
+    desk.panel.chosen.value = True
+    one = desk.panel.picture.widget.value
+    desk.panel.closest.value = True
+    assert len({before, one, desk.panel.picture.widget.value}) == 3
+
+
+def test_progress_is_shown_while_events_are_reconstructed(events, monkeypatch):
+    from toprecon.study import live as live_module
+
+    monkeypatch.setattr(live_module, "CHUNK", 500)
+    panel = widgets.AnglePanel(events, PLAN)
+    seen = []
+    panel.shared.progress.layout.observe(
+        lambda event: seen.append(event["new"]), names="display"
+    )
+    said = []
+    panel.shared.status.observe(lambda event: said.append(event["new"]), names="value")
+    try:
+        panel.live.wait()
+        panel.live.set_settings({"selection.btag_high": 0.8})
+        panel.live.wait()
+        assert seen[-2:] == [None, "none"]
+        assert any("reconstructing: 500 of 3,000 events" in text for text in said)
+    finally:
+        panel.close()
