@@ -1,25 +1,43 @@
 """Migration: generated against reconstructed angle, for whoever unfolds.
 
 *Takes* rows of the event table with weights. *Gives* a :class:`MigrationMatrix` with
-all that belongs to it, and files of it in open formats.
+all that belongs to it, files of it in open formats, and tests of how well a spectrum
+can be corrected with it.
 """
 
 from __future__ import annotations
 
+from toprecon.migration.closure import (
+    ClosureResult,
+    LinearityResult,
+    accumulate_halves,
+    check_closure,
+    check_linearity,
+)
 from toprecon.migration.hepdata import write_hepdata
 from toprecon.migration.histogram_json import read_histogram_json, write_histogram_json
 from toprecon.migration.matrix import MigrationMatrix, accumulate
 from toprecon.migration.npz import read_npz, write_npz
 from toprecon.migration.options import MigrationOptions
 from toprecon.migration.root import read_root, write_root
+from toprecon.migration.unfolding import Method, Unfolded, UnfoldingOptions, unfold
 
 __all__ = [
+    "ClosureResult",
+    "LinearityResult",
+    "Method",
     "MigrationMatrix",
     "MigrationOptions",
+    "Unfolded",
+    "UnfoldingOptions",
     "accumulate",
+    "accumulate_halves",
+    "check_closure",
+    "check_linearity",
     "read_histogram_json",
     "read_npz",
     "read_root",
+    "unfold",
     "write_hepdata",
     "write_histogram_json",
     "write_npz",
