@@ -196,9 +196,9 @@ def write(path, collections, convention="tree", subsets=()):
     columns = {}
     for name, (members, relations, vectors) in collections.items():
         for member, values in members.items():
-            if convention == "old tree" and member == "PDG" and "energy" in members:
-                member = "type"
-            columns[f"{name}.{member}"] = values
+            old = convention == "old tree" and "energy" in members
+            stored = "type" if old and member == "PDG" else member
+            columns[f"{name}.{stored}"] = values
         for relation, (index, target) in relations.items():
             columns |= link(name, relation, index, target, convention)
         for vector, values in vectors.items():

@@ -380,3 +380,52 @@ def test_a_flat_file_is_no_edm4hep(event_data):
     path = event_data / "showered" / "ww_500.root"
     with pytest.raises(UnknownFormatError, match="collections of EDM4hep are required"):
         open_events(path, layout=layout())
+
+
+def test_particles_may_be_a_subset(events, collections, tmp_path):
+    kind = events.particles.kind
+    local = ak.local_index(kind)
+    charged = (local[(kind != 1) & (kind != 2)], "PandoraPFOs")
+    path = edm4hep_files.write(
+        tmp_path / "x.root", collections, "tree", {"ChargedPFOs": charged}
+    )
+    again = open_events(path, layout=layout(particles="ChargedPFOs")).read()
+    mine = events.particles[(kind != 1) & (kind != 2)]
+    assert ak.all(again.particles.jet_index == mine.jet_index)
+    assert np.allclose(ak.flatten(again.particles.E), ak.flatten(mine.E), rtol=1e-6)
+
+
+def test_a_lepton_is_not_among_the_particles_even_without_a_link(tmp_path):
+    from toprecon.events import momenta
+
+    p = np.array([[40.0, 40, 0, 0], [30.0, 0, 30, 0], [60.0, 0, 59.9, 3.4]])
+    both = {
+        "PandoraPFOs": edm4hep_files.reco(momenta(p.T, [3]), -1, [13, 211, 211]),
+        "IsoLeptons": edm4hep_files.reco(momenta(p.T[:, :1], [1]), -1, 13),
+    }
+    made = {name: (members, {}, {}) for name, members in both.items()}
+    path = edm4hep_files.write(tmp_path / "x.root", made)
+    events = open_events(path).read()
+    assert events.leptons.E.to_list() == [[40.0]]
+    assert np.allclose(events.particles.E[0], [30, 60])
+
+
+def test_a_missing_member_is_named(collections, tmp_path):
+    members, relations, vectors = collections["RefinedJetTag_B"]
+    less = {k: v for k, v in members.items() if k != "PDG"}
+    made = {**collections, "RefinedJetTag_B": (less, relations, vectors)}
+    path = edm4hep_files.write(tmp_path / "x.root", made)
+    with pytest.raises(InputError, match=r"column 'RefinedJetTag_B.PDG' is required"):
+        open_events(path).read()
+
+
+def test_a_subset_into_nowhere_is_an_error(collections, tmp_path):
+    made = {k: v for k, v in collections.items() if k != "PandoraPFOs"}
+    members, _, vectors = made["Jets"]
+    made["Jets"] = (members, {}, vectors)
+    index = ak.unflatten(np.zeros(len(members["energy"]), int), 1)
+    path = edm4hep_files.write(
+        tmp_path / "x.root", made, "tree", {"Muon": (index, "Nothing")}
+    )
+    with pytest.raises(InputError, match="that subset 'Muon' points into is required"):
+        open_events(path)

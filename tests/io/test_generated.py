@@ -145,4 +145,4 @@ def test_any_links_whatever_give_momenta_or_nothing(seed):
         mine = p[:, event == k]
         for name in ("top", "b", "w_plus_up"):
             value = truth.p[name][:, k]
-            assert np.all(np.isnan(value)) or np.any(np.all(mine.T == value, axis=1))
+            assert np.all(np.isnan(value)) or np.any(np.all(value == mine.T, axis=1))

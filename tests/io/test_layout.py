@@ -114,9 +114,8 @@ def test_every_coordinate_system_gives_the_same_momenta(tmp_path, rng):
     energy = np.sqrt(p**2 + m**2)
     pt, phi, theta = np.hypot(px, py), np.arctan2(py, px), np.arccos(pz / p)
     eta = -np.log(np.tan(theta / 2))
-    columns = dict(
-        px=px, py=py, pz=pz, m=m, p=p, E=energy, pt=pt, phi=phi, theta=theta, eta=eta
-    )
+    columns = {"px": px, "py": py, "pz": pz, "m": m, "p": p, "E": energy}
+    columns |= {"pt": pt, "phi": phi, "theta": theta, "eta": eta}
     for direction in (("px", "py", "pz"), ("pt", "eta", "phi"), ("p", "theta", "phi")):
         for rest in ("E", "m"):
             names = (*direction, rest)

@@ -140,7 +140,7 @@ def test_a_reference_reader_sees_the_same_numbers(tmp_path, event_data):
         lambda text: text.replace("13 1 1.5", "-3 1 1.5", 1),
         lambda text: text.replace("9.\n", "9. 3.\n", 1),
         lambda text: text.replace(" 0. 9.\n", " zero 9.\n", 1),
-        lambda text: "<event>\n</event>\n",
+        lambda _: "<event>\n</event>\n",
     ],
 )
 def test_a_damaged_event_is_rejected_alone(tmp_path, damage):

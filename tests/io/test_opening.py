@@ -64,7 +64,7 @@ def test_the_tree_can_be_named(tmp_path):
     path = tmp_path / "two.root"
     with uproot.recreate(path) as file:
         for name, n in (("first", 3), ("second", 5)):
-            tree = file.mktree(name, {c: "var * float64" for c in flat_files.P4})
+            tree = file.mktree(name, dict.fromkeys(flat_files.P4, "var * float64"))
             data = flat_files.columns(n)
             tree.extend({c: ak.Array(data[f"jet_{c}"].tolist()) for c in flat_files.P4})
     layout = FileLayout(jets={c: c for c in flat_files.P4})

@@ -2,6 +2,7 @@ from __future__ import annotations
 
 import functools
 import http.server
+import pathlib
 import re
 import threading
 
@@ -26,7 +27,7 @@ class Ranges(http.server.SimpleHTTPRequestHandler):
             super().do_GET()
             return
         try:
-            with open(path, "rb") as file:
+            with pathlib.Path(path).open("rb") as file:
                 data = file.read()
         except OSError:
             self.send_error(404)

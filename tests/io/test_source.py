@@ -56,9 +56,9 @@ def test_showered_events_hold_what_the_columns_say(showered):
     assert np.all(charge == ak.flatten(tree["il_q"].array()))
     # leptons of negative charge have positive codes
     assert np.all(np.sign(ak.flatten(events.leptons.pdg)) == -charge)
-    assert np.all(events.truth.top.E == tree["gen_t_e"].array())
+    assert np.all(tree["gen_t_e"].array() == events.truth.top.E)
     assert np.all(events.truth.sqrt_s_prime == tree["ecm_eff"].array())
-    assert np.all(events.missing.E == tree["pmiss_e"].array())
+    assert np.all(tree["pmiss_e"].array() == events.missing.E)
     assert set(np.unique(events.helicity)) == {-1}
     sample = source.samples[0]
     assert (sample.name, sample.helicity) == ("lepjets_500_LR", Helicity.LR)

@@ -6,6 +6,7 @@ import dataclasses
 import os
 from typing import Any
 
+from toprecon.io.branches import mapped_columns
 from toprecon.io.columns import Columns
 from toprecon.io.edm4hep_collections import is_edm4hep
 from toprecon.io.edm4hep_reader import Edm4hepReader
@@ -19,7 +20,6 @@ from toprecon.io.formats import (
 from toprecon.io.guess import guess_layout
 from toprecon.io.identity import fingerprint
 from toprecon.io.layout import FileLayout, Format
-from toprecon.io.mapping import mapped_columns
 from toprecon.io.opening import split_tree
 from toprecon.io.own_layout import SAMPLES_KEY
 from toprecon.io.parquet_files import ParquetColumns

@@ -93,7 +93,8 @@ def choose_collections(file: Collections, options: Edm4hepOptions) -> Choice:
     def pick(role: str, among: Iterable[str], given: str) -> str:
         return _pick(file, role, list(among), given)
 
-    jets = pick("jets", reco, options.jets)
+    # jets have relations of their own, so a subset will not do
+    jets = pick("jets", file.of_kind(RECO), options.jets)
     taken = {jets}
     particles = pick(
         "particles", (c for c in reco if c not in taken), options.particles

@@ -174,7 +174,12 @@ class Block:
 
     def column(self, name: str) -> Column:
         """Return a column with its counts."""
-        column = self._values[name]
+        column = self._values.get(name)
+        if column is None:
+            msg = (
+                f"{self.file.columns.path}: column {name!r} is required, but is missing"
+            )
+            raise InputError(msg)
         if column.counts is None:
             msg = f"{self.file.columns.path}: {name}: a list per event is required"
             raise InputError(msg)

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from toprecon.errors import InputError
 from toprecon.events import Sample
 from toprecon.io.beams import BeamFrame, beam_particles, frame_of
 from toprecon.io.edm4hep_choice import (
@@ -15,7 +16,7 @@ from toprecon.io.edm4hep_choice import (
     describe_tag,
     lepton_code,
 )
-from toprecon.io.edm4hep_collections import Block, Collections
+from toprecon.io.edm4hep_collections import RECO, Block, Collections
 from toprecon.io.edm4hep_tags import tag_columns, tag_scores
 from toprecon.io.generated import GeneratedParticles, find_pair, links
 from toprecon.io.layout import FileLayout
@@ -61,6 +62,11 @@ class Edm4hepReader:
         }
         self.optional = frozenset(name for name, has in optional.items() if has)
         self._energy: float | None = layout.edm4hep.sqrt_s
+        choice = self.choice
+        chosen = (*choice.leptons, choice.particles, choice.photons, choice.missing)
+        self._targets = {
+            name: self._target(name) for name in chosen if name in self.file.subsets
+        }
 
     def mapped(self) -> dict[str, str]:
         """Return where every quantity comes from, for a description."""
@@ -100,8 +106,8 @@ class Edm4hepReader:
         block = self._block(self._all_columns(), start, stop)
         problems = {Reason.INCONSISTENT: np.zeros(block.n, dtype=bool)}
         jets = self._jets(block, problems)
-        particles = self._particles(block, jets, problems)
-        leptons = self._leptons(block, particles, problems)
+        particles, position = self._particles(block, jets, problems)
+        leptons = self._leptons(block, particles, position, problems)
         objects = {"jets": jets, "leptons": leptons}
         visible = None
         if particles is not None:
@@ -195,10 +201,32 @@ class Edm4hepReader:
         subset = self.file.subsets.get(collection)
         if subset:
             names |= {f"{subset}.index", f"{subset}.collectionID"}
-            collection = self.choice.particles
+        collection = self._stored(collection)
         return names | {
             f"{collection}.{member}" for member in (*_P4, "charge", "PDG", "type")
         }
+
+    def _stored(self, collection: str) -> str:
+        """Return the collection that holds the data of a collection or subset."""
+        return self._targets.get(collection, collection)
+
+    def _target(self, collection: str) -> str:
+        """Return the collection that a subset points into, by its first entries."""
+        branch = f"{self.file.subsets[collection]}.collectionID"
+        stop = min(_LOOK, self.n_entries)
+        reco = self.file.of_kind(RECO)
+        if branch in self._columns.types:
+            stored = self._columns.read([branch], 0, stop)[branch].values
+            for number in np.unique(stored.astype(np.int64) & 0xFFFFFFFF):
+                if self.file.name(int(number)) in reco:
+                    return self.file.name(int(number))
+        if self.choice.particles in reco:
+            return self.choice.particles
+        msg = (
+            f"{self._columns.path}: the collection that subset {collection!r} points "
+            "into is required, but is not known; name the particles in the layout"
+        )
+        raise InputError(msg)
 
     def _headers(self, block: Block) -> RawHeaders:
         """Weights, energies and numbers of events."""
@@ -233,7 +261,7 @@ class Edm4hepReader:
     ) -> RawObjects:
         """Reconstructed particles with charge and code, through a subset if it is one."""
         subset = self.file.subsets.get(collection)
-        stored = self.choice.particles if subset else collection
+        stored = self._stored(collection)
         code = "PDG" if self.file.has(stored, "PDG") else "type"
         members = [*_P4, "charge"]
         members += [code] if self.file.has(stored, code) else []
@@ -278,11 +306,12 @@ class Edm4hepReader:
 
     def _particles(
         self, block: Block, jets: RawObjects, problems: dict[Reason, Any]
-    ) -> RawObjects | None:
-        """Particle-flow objects with the jet each belongs to."""
+    ) -> tuple[RawObjects | None, IntArray]:
+        """Particle-flow objects with their jets, and where each stored one went."""
         if not self.choice.particles:
-            return None
-        objects = self._objects(block, self.choice.particles, problems)
+            return None, np.zeros(0, dtype=np.int64)
+        base = self._stored(self.choice.particles)
+        objects = self._objects(block, base, problems)
         n = objects.p.shape[1]
         jet_index = np.full(n, -1, dtype=np.int64)
         branch = self.file.relation_branch(self.choice.jets, "particles")
@@ -293,7 +322,7 @@ class Edm4hepReader:
             problems[Reason.INCONSISTENT] |= bad | (counts != jets.counts)
             relation = block.relation(branch)
             jet, particle = links(
-                block.only_into(relation, self.choice.particles),
+                block.only_into(relation, base),
                 relation.counts,
                 ranges["particles_begin"],
                 ranges["particles_end"],
@@ -326,22 +355,36 @@ class Edm4hepReader:
             "isolated": np.zeros(n, dtype=np.int8),
             "pdg": objects.extra["pdg"],
         }
-        return objects
+        if base == self.choice.particles:
+            return objects, np.arange(n)
+        subset = self._objects(block, self.choice.particles, problems)
+        selected = np.zeros(n, dtype=bool)
+        selected[subset.extra["subset_of"]] = True
+        position = np.where(selected, np.cumsum(selected) - 1, -1)
+        return objects.keep_objects(selected), position
 
     def _leptons(
         self,
         block: Block,
         particles: RawObjects | None,
+        position: IntArray,
         problems: dict[Reason, Any],
     ) -> RawObjects:
         """Isolated leptons, from their collections or by isolation."""
         pdg = particles.extra.pop("pdg") if particles is not None else None
         if self.choice.leptons:
-            parts = [self._collected(block, c, problems) for c in self.choice.leptons]
-            for part in parts:
+            parts = []
+            for name in self.choice.leptons:
+                part = self._collected(block, name, problems)
                 where = part.extra.pop("subset_of", None)
-                if particles is not None and where is not None:
-                    particles.extra["isolated"][where[where >= 0]] = 1
+                if particles is not None:
+                    base = self._stored(self.choice.particles)
+                    if where is not None and self._stored(name) == base:
+                        mine = position[where]
+                        particles.extra["isolated"][mine[mine >= 0]] = 1
+                    else:
+                        particles.extra["isolated"][_copies(particles, part)] = 1
+                parts.append(part)
             return RawObjects.joined(parts)
         if particles is None or pdg is None:
             nothing = {"charge": float, "pdg": np.int32, "isolation": float}
@@ -383,14 +426,10 @@ class Edm4hepReader:
             stored = block.column(name)
             if np.array_equal(np.asarray(stored.counts), objects.counts):
                 share = stored.values.astype(np.float64)
-        where = objects.extra.get("subset_of", np.full(len(charge), -1, np.int64))
-        objects.extra = {
-            "charge": charge,
-            "pdg": pdg.astype(np.int32),
-            "isolation": share,
-            "subset_of": where,
-        }
-        return objects
+        extra = {"charge": charge, "pdg": pdg.astype(np.int32), "isolation": share}
+        if "subset_of" in objects.extra:
+            extra["subset_of"] = objects.extra["subset_of"]
+        return RawObjects(objects.p, objects.counts, extra)
 
     def _generated(self, block: Block) -> GeneratedParticles:
         """Return generated particles and their links, from both directions."""
@@ -431,3 +470,14 @@ def _sum(objects: RawObjects) -> FloatArray:
     n = len(objects.counts)
     event = np.repeat(np.arange(n), objects.counts)
     return np.stack([np.bincount(event, row, minlength=n) for row in objects.p])
+
+
+def _copies(particles: RawObjects, others: RawObjects) -> IntArray:
+    """Positions of particles that are, number by number, one of the others."""
+    event = np.repeat(np.arange(len(others.counts)), others.counts)
+    size = particles.counts[event]
+    other = np.repeat(np.arange(len(event)), size)
+    first = np.repeat(np.cumsum(size) - size, size)
+    mine = np.arange(size.sum()) - first + np.repeat(particles.offsets[event], size)
+    same = np.all(particles.p[1:, mine] == others.p[1:, other], axis=0)
+    return mine[same]

@@ -10,6 +10,12 @@ from numpy.typing import NDArray
 
 from toprecon.errors import InputError, nearest
 from toprecon.events import TRUTH_MOMENTA, Sample
+from toprecon.io.branches import (
+    OBJECTS,
+    header_branches,
+    object_branches,
+    part_branches,
+)
 from toprecon.io.checksum import checksums
 from toprecon.io.columns import Column, Columns
 from toprecon.io.layout import (
@@ -32,7 +38,6 @@ from toprecon.io.raw import (
     Reason,
 )
 
-_OBJECTS = ("jets", "leptons", "particles", "photons")
 _FERMIONS = TRUTH_MOMENTA[6:]
 _DEFAULTS = {"kind": 0, "jet_index": -1, "pdg": 0}
 
@@ -66,27 +71,27 @@ class ColumnReader:
             for name in ("particles", "photons", "missing", "truth")
             if getattr(self.layout, name)
         )
-        self._header_names = _header_branches(self.layout)
-        self._names = sorted(_branches(self.layout) | self._header_names)
-        counters = {t.count for name in _OBJECTS for t in getattr(self.layout, name)}
+        self._header_names = header_branches(self.layout)
+        self._names = sorted(object_branches(self.layout) | self._header_names)
+        counters = {t.count for name in OBJECTS for t in getattr(self.layout, name)}
         self._summed = set(self._names) - counters - {self.layout.event.checksum}
 
     def _present(self, layout: FileLayout) -> FileLayout:
         """Leave out optional parts that the file lacks; the others must exist."""
         changes: dict[str, Any] = {}
-        for name in _OBJECTS:
+        for name in OBJECTS:
             tables = getattr(layout, name)
             changes[name] = tuple(t for t in tables if self._has(t, f"[{name}]"))
         for name in ("missing", "truth"):
             part = getattr(layout, name)
             changes[name] = part if part and self._has(part, f"[{name}]") else None
-        for branch in sorted(_header_branches(layout)):
+        for branch in sorted(header_branches(layout)):
             self._require(branch, "[event]")
         return layout.model_copy(update=changes)
 
     def _has(self, part: Any, section: str) -> bool:
         """Whether the columns of a section exist; some but not all is an error."""
-        names = _part_branches(part)
+        names = part_branches(part)
         if part.optional and not any(name in self._columns.types for name in names):
             return False
         for name in sorted(names):
@@ -141,7 +146,7 @@ class ColumnReader:
         unit = ENERGY_UNITS[layout.energy_unit]
         self._check_sums(columns)
         objects = {}
-        for name in _OBJECTS:
+        for name in OBJECTS:
             tables = getattr(layout, name)
             if tables:
                 parts = [_objects(name, t, columns, unit) for t in tables]
@@ -300,7 +305,9 @@ def _objects(
         if given is None:
             given = np.full(p.shape[1], _DEFAULTS.get(key, np.nan))
         whole = np.issubdtype(kind, np.integer)
-        extra[key] = _integers(given, kind) if whole else given.astype(np.float64, copy=False)
+        extra[key] = (
+            _integers(given, kind) if whole else given.astype(np.float64, copy=False)
+        )
     objects = RawObjects(p, counts, extra)
     if table.zero_is_absent:
         objects = objects.keep_objects(np.any(p != 0, axis=0))
@@ -425,7 +432,9 @@ def _complete_leptons(table: LeptonColumns, values: dict[str, FloatArray]) -> No
     if "charge" not in values:
         values["charge"] = -np.sign(values["pdg"].astype(np.float64))
     elif table.pdg.value is not None:
-        values["pdg"] = -np.sign(values["charge"].astype(np.float64)) * abs(table.pdg.value)
+        values["pdg"] = -np.sign(values["charge"].astype(np.float64)) * abs(
+            table.pdg.value
+        )
 
 
 def _integers(values: NDArray[Any], kind: Any) -> NDArray[Any]:
@@ -433,72 +442,3 @@ def _integers(values: NDArray[Any], kind: Any) -> NDArray[Any]:
     limits = np.iinfo(kind)
     good = (values >= limits.min) & (values <= limits.max)
     return np.where(good, values, 0).astype(kind)
-
-
-def _part_branches(part: Any) -> set[str]:
-    """Columns that one section names."""
-    if isinstance(part, MomentumColumns):
-        names = {s.branch for s in part.sources().values() if s.branch}
-        if isinstance(part, ObjectColumns):
-            names = {
-                name.replace(SLOT, str(slot))
-                for name in names
-                for slot in part.slots or (0,)
-            }
-            names |= {part.count} if part.count else set()
-        return names
-    names = set().union(*(_part_branches(table) for _, table in part.momenta()))
-    prime = part.sqrt_s_prime
-    return names | ({prime.branch} if prime is not None and prime.branch else set())
-
-
-def _branches(layout: FileLayout) -> set[str]:
-    """Columns that the layout names for objects and truth."""
-    parts: list[Any] = [t for name in _OBJECTS for t in getattr(layout, name)]
-    parts += [part for part in (layout.missing, layout.truth) if part]
-    return set().union(*(_part_branches(part) for part in parts)) if parts else set()
-
-
-def _header_branches(layout: FileLayout) -> set[str]:
-    """Columns that the layout names for whole events."""
-    event = layout.event
-    names = {event.id, event.run, event.number, event.sample, event.checksum}
-    names |= {s.branch for s in (event.weight, event.helicity, event.sqrt_s) if s}
-    return names - {""}
-
-
-def mapped_columns(layout: FileLayout) -> dict[str, str]:
-    """Return where every quantity comes from.
-
-    Parameters
-    ----------
-    layout : FileLayout
-        Layout of columns.
-
-    Returns
-    -------
-    dict
-        Quantity of Events -> column; constants are left out.
-    """
-    out: dict[str, str] = {}
-    for name in _OBJECTS:
-        for table in getattr(layout, name):
-            for key, source in table.sources().items():
-                if source.branch:
-                    out.setdefault(f"{name}.{key}", source.branch)
-    parts: dict[str, Any] = {"missing": layout.missing}
-    if layout.truth is not None:
-        parts |= {f"truth.{name}": table for name, table in layout.truth.momenta()}
-        if layout.truth.sqrt_s_prime is not None:
-            out["truth.sqrt_s_prime"] = layout.truth.sqrt_s_prime.branch
-    for name, part in parts.items():
-        if part is not None:
-            for key, source in part.sources().items():
-                out[f"{name}.{key}"] = source.branch
-    event = layout.event
-    named = {name: getattr(event, name) for name in ("id", "run", "number", "sample")}
-    for name in ("weight", "helicity", "sqrt_s"):
-        source = getattr(event, name)
-        named[name] = source.branch if source is not None else ""
-    out |= {f"event.{name}": branch for name, branch in named.items()}
-    return {name: branch for name, branch in out.items() if branch}
