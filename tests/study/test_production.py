@@ -15,7 +15,7 @@ from toprecon.errors import InputError, OptionError, StudyError
 from toprecon.events import samples_of, with_samples
 from toprecon.kinematics import mass
 from toprecon.study import Recipe, content_checksum, open_events, produce, production
-from toprecon.study.production import rounded
+from toprecon.study.storing import rounded
 
 TEXT = """
 mantissa_bits = 16

@@ -14,6 +14,7 @@ from concurrent.futures import ProcessPoolExecutor
 from pathlib import Path
 from typing import Any
 
+from toprecon import study as study_room
 from toprecon.errors import InputError, MissingPackageError, OptionError
 from toprecon.study import (
     Recipe,
@@ -58,6 +59,12 @@ def study(options: argparse.Namespace) -> int:
         print(json.dumps(result.to_mapping(), allow_nan=False))
     else:
         print(result_text(result))
+    return 0
+
+
+def describe(options: argparse.Namespace) -> int:
+    """Print what is in a file and a layout to start from; returns 0."""
+    print(study_room.describe(options.file, layout=options.layout))
     return 0
 
 

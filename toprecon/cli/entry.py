@@ -88,6 +88,13 @@ def parser() -> argparse.ArgumentParser:
     )
     study.set_defaults(command=commands.study)
 
+    describe = subcommands.add_parser(
+        "describe", help="say what is in a file and how it would be read"
+    )
+    describe.add_argument("file", metavar="FILE", help="file, file:tree or URL")
+    describe.add_argument("--layout", help="layout of the file (TOML)")
+    describe.set_defaults(command=commands.describe)
+
     generate = subcommands.add_parser(
         "generate", help="make event samples from a recipe; goes on where it stopped"
     )

@@ -8,6 +8,13 @@ It re-exports what notebooks and the command line need from the steps.
 
 from __future__ import annotations
 
+from toprecon.asymmetry import (
+    BeamRun,
+    EstimatorOptions,
+    Keep,
+    ScanAxis,
+    ScanOptions,
+)
 from toprecon.events import (
     Binning,
     Branch,
@@ -18,31 +25,39 @@ from toprecon.events import (
     PairingClass,
     Status,
 )
-from toprecon.io import load_layout, open_events, write_events
+from toprecon.io import describe, load_layout, open_events, write_events
+from toprecon.migration import UnfoldingOptions
 from toprecon.study.chunks import (
     check_references,
     part_path,
     reconstruct_chunk,
     reconstruct_source,
 )
+from toprecon.study.closing import angle_linearity, closure_of, coupling_dependence
+from toprecon.study.comparing import compare_plans
 from toprecon.study.cutting import Cutting, apply_cuts, passes_cut
 from toprecon.study.handoff import HandOff, check_target, read_hand_off, write_hand_off
+from toprecon.study.interpreting import bias_meaning, helicity_summary
 from toprecon.study.live import LiveStudy
 from toprecon.study.plan import (
     OBSERVABLES,
     AngleOptions,
     BeamsOptions,
+    BranchChoice,
     CutOptions,
     Direction,
     Frame,
     StudyOptions,
     StudyPlan,
 )
-from toprecon.study.production import Produced, Recipe, content_checksum, produce
+from toprecon.study.polarisation import PolarisationEffect
+from toprecon.study.production import Produced, Recipe, produce
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.report import result_mapping, result_text, sentence_of
 from toprecon.study.result import CAUTIONS, BeamsResult, StudyResult, finish
 from toprecon.study.running import CHUNK_SIZE, run_study, summarise_chunk
+from toprecon.study.scanning import scan_cuts
+from toprecon.study.storing import content_checksum
 from toprecon.study.sums import StudySums, merge, summarise
 from toprecon.study.weights import SampleFactors, sample_factors
 
@@ -51,34 +66,49 @@ __all__ = [
     "CHUNK_SIZE",
     "OBSERVABLES",
     "AngleOptions",
+    "BeamRun",
     "BeamsOptions",
     "BeamsResult",
     "Binning",
     "Branch",
+    "BranchChoice",
     "Channel",
     "CutOptions",
     "Cutting",
     "Direction",
+    "EstimatorOptions",
     "EventTable",
     "Frame",
     "HandOff",
     "Helicity",
+    "Keep",
     "LiveStudy",
     "Observable",
     "PairingClass",
+    "PolarisationEffect",
     "Produced",
     "Recipe",
     "SampleFactors",
+    "ScanAxis",
+    "ScanOptions",
     "Status",
     "StudyOptions",
     "StudyPlan",
     "StudyResult",
     "StudySums",
+    "UnfoldingOptions",
+    "angle_linearity",
     "apply_cuts",
+    "bias_meaning",
     "check_references",
     "check_target",
+    "closure_of",
+    "compare_plans",
     "content_checksum",
+    "coupling_dependence",
+    "describe",
     "finish",
+    "helicity_summary",
     "load_layout",
     "merge",
     "open_events",
@@ -93,6 +123,7 @@ __all__ = [
     "result_text",
     "run_study",
     "sample_factors",
+    "scan_cuts",
     "sentence_of",
     "summarise",
     "summarise_chunk",

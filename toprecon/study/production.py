@@ -19,22 +19,27 @@ from concurrent.futures import Executor
 from pathlib import Path
 from typing import Any
 
-import awkward as ak
-import numpy as np
-from numpy.typing import NDArray
+import tomli_w
 from pydantic import field_validator
 
 from toprecon.errors import InputError, OptionError, StudyError
-from toprecon.events import concatenate_events, samples_of, with_samples
+from toprecon.events import concatenate_events
 from toprecon.generation import GenerationOptions, generate
+from toprecon.generation import describe as describe_sample
 from toprecon.io import open_events, write_events
-from toprecon.kinematics import mass, momentum
 from toprecon.options import Options, option
+from toprecon.study.storing import content_checksum, rounded
+
+CATALOGUE_HEADER = """# Samples and their cross sections [fb], written with the events.
+# Top pairs: tree level with radiation along the beams, times the branching fraction of
+# the decays. Backgrounds: unpolarised cross section of the event generator; its
+# division among the beam helicities is that of the tree level (quark pairs) or of
+# arXiv:1307.8102 at 500 GeV, from memory (WW, ZZ), and the shape is taken to be the
+# same for both helicities.
+
+"""
 
 Progress = Callable[[str, int, int], Any]
-
-COMPONENTS = ("E", "px", "py", "pz")
-NOT_ROUNDED = {"id", "weight", "sample", "helicity", "sqrt_s"}
 
 
 class SampleRecipe(Options):
@@ -43,6 +48,9 @@ class SampleRecipe(Options):
     name: str = option(..., "name of the sample and of its file")
     events: int = option(..., "events generated", low=1)
     seed: int = option(1, "seed of the sample", low=0, high=2**32 - 1)
+    catalogue: str = option(
+        "catalogue.toml", "catalogue that lists the sample; samples of one energy each"
+    )
     options: GenerationOptions = option(
         None, "settings of the generator", factory=GenerationOptions
     )
@@ -215,119 +223,34 @@ def produce(
                 "(replace=True, --replace)"
             )
             raise StudyError(msg)
-    return [
+    made = [
         known or _produce(job, part_size, progress, executor)
         for job, known in zip(jobs, finished, strict=True)
     ]
+    _write_catalogues(recipe, made, target)
+    return made
 
 
-def content_checksum(events: ak.Array) -> str:
-    """Return a hash of the content of events.
-
-    Parameters
-    ----------
-    events : ak.Array
-        Events.
-
-    Returns
-    -------
-    str
-        SHA-256 over all columns in alphabetical order: equal for equal content, however
-        the events were made, stored or read.
-    """
-    whole = hashlib.sha256()
-    for name, column in sorted(_columns(events).items()):
-        whole.update(name.encode())
-        flat = ak.to_numpy(ak.flatten(column, axis=None))
-        if column.ndim > 1:
-            whole.update(ak.to_numpy(ak.num(column, axis=1)).astype("<i8").tobytes())
-        kind = "<u8" if flat.dtype == np.uint64 else "<f8"
-        # one bit pattern for every NaN and for both zeros
-        values = flat.astype(kind) + (0 if kind == "<u8" else 0.0)
-        if kind == "<f8":
-            values[np.isnan(values)] = np.nan
-        whole.update(values.tobytes())
-    return whole.hexdigest()
-
-
-def rounded(events: ak.Array, bits: int) -> ak.Array:
-    """Return events with floating-point numbers rounded to some bits of mantissa.
-
-    Parameters
-    ----------
-    events : ak.Array
-        Events.
-    bits : int
-        Bits kept, 8 to 52.
-
-    Returns
-    -------
-    ak.Array
-        Momenta keep their masses; weights and identities are untouched.
-    """
-    if bits >= 52:
-        return events
-    fields = {
-        name: events[name]
-        if name in NOT_ROUNDED
-        else ak.transform(lambda layout, **_: _round_leaf(layout, bits), events[name])
-        for name in events.fields
-    }
-    out = ak.Array(
-        ak.contents.RecordArray(
-            [x.layout for x in fields.values()], list(fields), length=len(events)
+def _write_catalogues(recipe: Recipe, made: list[Produced], folder: Path) -> None:
+    """List the samples with their cross sections, one file per catalogue named."""
+    catalogues: dict[str, dict[str, Any]] = {}
+    for sample, produced in zip(recipe.samples, made, strict=True):
+        options = sample.options.replace(name=sample.name)
+        row = describe_sample(options, sample.events).to_mapping()
+        pure = {"LR": "cross_section_lr", "RL": "cross_section_rl"}
+        sections = ("cross_section", "cross_section_lr", "cross_section_rl")
+        only = pure.get(row["helicity"])
+        kept = (
+            *("process", "helicity", "sqrt_s", "generated"),
+            *(name for name in sections if only in {None, name}),
         )
-    )
-    return with_samples(out, samples_of(events))
-
-
-def _round_leaf(layout: Any, bits: int) -> Any:
-    """Round a column of floats, or momenta keeping their masses."""
-    if isinstance(layout, ak.contents.RecordArray) and layout.parameter("__record__"):
-        return _round_momenta(layout, bits)
-    if not isinstance(layout, ak.contents.NumpyArray):
-        return None
-    data = np.asarray(layout.data)
-    if data.dtype != np.float64:
-        return layout
-    return ak.contents.NumpyArray(_round(data, bits))
-
-
-def _round_momenta(layout: Any, bits: int) -> Any:
-    """Round the three-momentum; the energy follows from it and the mass."""
-    columns = dict(zip(layout.fields, layout.contents, strict=True))
-    p = np.stack([np.asarray(columns[c].data)[: len(layout)] for c in COMPONENTS])
-    m = mass(p)
-    p[1:] = _round(p[1:], bits)
-    p[0] = _round(np.sqrt(m**2 + momentum(p) ** 2), max(bits, 23))
-    new = dict(zip(COMPONENTS, p, strict=True))
-    contents = [
-        ak.contents.NumpyArray(new[name]) if name in new else _round_leaf(column, bits)
-        for name, column in columns.items()
-    ]
-    return ak.contents.RecordArray(
-        contents, list(columns), length=len(layout), parameters=layout.parameters
-    )
-
-
-def _round(values: NDArray[np.float64], bits: int) -> NDArray[np.float64]:
-    """Round to some bits of mantissa."""
-    mantissa, exponent = np.frexp(values)
-    scale = float(2**bits)
-    return np.asarray(np.ldexp(np.rint(mantissa * scale) / scale, exponent))
-
-
-def _columns(events: ak.Array, prefix: str = "") -> dict[str, ak.Array]:
-    """Columns of nested records by their path."""
-    out: dict[str, ak.Array] = {}
-    for name in events.fields:
-        column = events[name]
-        path = f"{prefix}{name}"
-        if column.fields:
-            out.update(_columns(column, f"{path}."))
-        else:
-            out[path] = column
-    return out
+        entry = {"files": [produced.path.name], **{k: row[k] for k in kept if k in row}}
+        catalogues.setdefault(sample.catalogue, {})[sample.name] = entry
+    for name, samples in catalogues.items():
+        text = CATALOGUE_HEADER + tomli_w.dumps({"samples": samples})
+        partial = folder / f".{name}.part"
+        partial.write_text(text, encoding="utf-8")
+        partial.replace(folder / name)
 
 
 @dataclasses.dataclass(frozen=True)

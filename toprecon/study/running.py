@@ -82,7 +82,8 @@ def run_study(
         paths = _paths(source)
         if len(paths) == 1 and _is_table(paths[0]):
             return finish(summarise(EventTable.load(paths[0]), plan), plan)
-        source = open_events(paths, layout=layout, catalogue=catalogue)
+        one = paths[0] if len(paths) == 1 else paths  # one path may be a catalogue
+        source = open_events(one, layout=layout, catalogue=catalogue)
     refs = source.references(chunk_size)
     check_references(refs)
     sums: dict[ChunkRef, StudySums] = {}
