@@ -13,6 +13,7 @@ import json
 import math
 import os
 import tomllib
+from collections.abc import Iterable
 from enum import StrEnum
 from pathlib import Path
 from typing import Any, Self
@@ -101,6 +102,12 @@ class BeamsOptions(Options):
     )
     luminosity: float = option(
         0.0, "integrated luminosity; 0 means not stated", unit="fb^-1", low=0
+    )
+    electron_polarisation_error: float = option(
+        0.0, "error of the polarisation of the electron beam", low=0, high=1
+    )
+    positron_polarisation_error: float = option(
+        0.0, "error of the polarisation of the positron beam", low=0, high=1
     )
 
 
@@ -304,6 +311,24 @@ class StudyPlan(Options):
         else:
             cuts.append(new)
         return self.replace(cuts=tuple(cuts))
+
+    def with_cuts(self, cuts: Iterable[tuple[str, float | None, float | None]]) -> Self:
+        """Return the plan with several cuts set or replaced, such as those of a scan.
+
+        Parameters
+        ----------
+        cuts : iterable of tuple
+            (observable, low, high), as :meth:`with_cut` takes them.
+
+        Returns
+        -------
+        StudyPlan
+            A new plan.
+        """
+        plan = self
+        for observable, low, high in cuts:
+            plan = plan.with_cut(observable, low, high)
+        return plan
 
     def as_code(self) -> str:
         """Return a Python expression that makes this plan from the default one."""

@@ -156,6 +156,11 @@ def _beams_mapping(beams: BeamsResult) -> dict[str, Any]:
             )
         },
         "expected_error": _number(a.expected_error) if beams.is_expected else None,
+        "polarisation_error": (
+            _number(beams.polarisation.error("reconstructed"))
+            if beams.polarisation
+            else None
+        ),
         "efficiency": a.efficiency.to_mapping(),
         "fraction_right": a.fraction_right.to_mapping(),
         "background_share": _number(a.background_share),
@@ -221,6 +226,9 @@ def _beams_lines(title: str, beams: BeamsResult) -> list[str]:
         lines.append(f"  {name:<24}{value!s:>20}    {change}".rstrip())
     if beams.is_expected:
         lines.append(f"  expected error of data: {a.expected_error:.4f}")
+    if beams.polarisation is not None:
+        error = beams.polarisation.error("reconstructed")
+        lines.append(f"  error from the polarisations: {error:.5f}")
     f = a.flips
     lines += [
         "",

@@ -16,6 +16,7 @@ from toprecon.events import CutFlow, Sample, Status
 from toprecon.io import InputReport
 from toprecon.migration import MigrationMatrix
 from toprecon.study.plan import StudyPlan
+from toprecon.study.polarisation import PolarisationEffect, polarisation_effect
 from toprecon.study.sums import SampleSums, StudySums
 from toprecon.study.weights import PURE_BEAMS, SampleFactors, sample_factors
 
@@ -43,6 +44,9 @@ class BeamsResult:
         A_FB and its distortion.
     migration : MigrationMatrix
         Generated against reconstructed angle.
+    polarisation : PolarisationEffect or None
+        What the errors of the polarisations do; None if the plan states none, or if
+        the mix of beams is not known.
     """
 
     name: str
@@ -51,6 +55,7 @@ class BeamsResult:
     signal_cut_flow: CutFlow
     asymmetry: AsymmetryResult
     migration: MigrationMatrix
+    polarisation: PolarisationEffect | None = None
 
     @property
     def is_expected(self) -> bool:
@@ -202,7 +207,9 @@ def finish(
     statuses = np.sum([part.statuses for part in parts], axis=0)
     return StudyResult(
         plan=plan,
-        beams=_combine("plan", parts, sample_factors(samples, plan.beams)),
+        beams=_with_polarisation(
+            _combine("plan", parts, sample_factors(samples, plan.beams)), parts, plan
+        ),
         by_helicity=by_helicity,
         samples=samples,
         statuses={s.name.lower(): int(statuses[s]) for s in Status if statuses[s]},
@@ -231,6 +238,16 @@ def _combine(name: str, parts: list[SampleSums], factors: SampleFactors) -> Beam
     return BeamsResult(
         name, factors, cut_flow, signal_cut_flow, asymmetry.result(), migration
     )
+
+
+def _with_polarisation(
+    beams: BeamsResult, parts: list[SampleSums], plan: StudyPlan
+) -> BeamsResult:
+    """Add what the errors of the polarisations do, if the plan states any."""
+    options = plan.beams
+    if not (options.electron_polarisation_error or options.positron_polarisation_error):
+        return beams
+    return dataclasses.replace(beams, polarisation=polarisation_effect(parts, options))
 
 
 def _check_not_empty(parts: list[SampleSums]) -> None:

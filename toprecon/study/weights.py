@@ -12,8 +12,11 @@ import dataclasses
 import math
 from collections.abc import Sequence
 
-from toprecon.errors import StudyError
-from toprecon.events import Helicity, Sample
+import numpy as np
+from numpy.typing import NDArray
+
+from toprecon.errors import OptionError, StudyError
+from toprecon.events import EventTable, Helicity, Sample
 from toprecon.study.plan import BeamsOptions
 from toprecon.treelevel import beam_fractions
 
@@ -92,6 +95,55 @@ def sample_factors(
         sigma = effective_cross_section(sample, *pair)
         factors[sample.name] = beams.luminosity * sigma / norm if norm else 0.0
     return SampleFactors(factors, is_expected=True)
+
+
+def polarisations_of(name: str) -> tuple[float, float] | None:
+    """Return the polarisations of named beams, or nothing for those of the plan.
+
+    Parameters
+    ----------
+    name : str
+        ``"plan"``, ``"LR"`` or ``"RL"``.
+
+    Returns
+    -------
+    tuple of float or None
+        Electron and positron; to be given to :func:`sample_factors`.
+
+    Raises
+    ------
+    OptionError
+        If there are no beams of this name.
+    """
+    pure = {helicity.name: pair for helicity, pair in PURE_BEAMS.items()}
+    if name != "plan" and name not in pure:
+        msg = f"beams: must be one of plan, {', '.join(pure)}; got {name!r}"
+        raise OptionError(msg)
+    return pure.get(name)
+
+
+def weighted_rows(
+    table: EventTable, beams: BeamsOptions, name: str = "plan"
+) -> tuple[NDArray[np.float64], SampleFactors]:
+    """Return the weight of every row for named beams.
+
+    Parameters
+    ----------
+    table : EventTable
+        Rows of all samples.
+    beams : BeamsOptions
+        Of the plan.
+    name : str
+        ``"plan"``, ``"LR"`` or ``"RL"``.
+
+    Returns
+    -------
+    tuple
+        Weights, shape (E,), 0 for samples that these beams leave out; and the factors.
+    """
+    factors = sample_factors(table.samples, beams, polarisations=polarisations_of(name))
+    per_sample = np.array([factors.factors[s.name] for s in table.samples])
+    return table["weight"] * per_sample[table["sample"]], factors
 
 
 def effective_cross_section(

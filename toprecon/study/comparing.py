@@ -1,0 +1,75 @@
+"""Two plans on the same events."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import awkward as ak
+
+from toprecon.asymmetry import Comparison, Rows, compare
+from toprecon.errors import StudyError
+from toprecon.events import EventTable
+from toprecon.study.cutting import apply_cuts
+from toprecon.study.plan import StudyPlan
+from toprecon.study.reconstruction import reconstruct
+from toprecon.study.sums import check_plan
+from toprecon.study.weights import weighted_rows
+
+
+def compare_plans(
+    source: Any,
+    first: StudyPlan,
+    second: StudyPlan,
+    *,
+    beams: str = "plan",
+) -> Comparison:
+    """Carry out two plans on the same events and compare them with paired errors.
+
+    Parameters
+    ----------
+    source : events, EventTable or pair of EventTable
+        Events are reconstructed with both plans; one table serves two plans that
+        differ in cuts or beams only; two tables were made with one plan each.
+    first, second : StudyPlan
+        The plans.
+    beams : str
+        ``"plan"`` (each its own), ``"LR"`` or ``"RL"``.
+
+    Returns
+    -------
+    Comparison
+        Differences are second minus first.
+
+    Raises
+    ------
+    StudyError
+        If one table is given for plans that reconstruct differently.
+    """
+    tables = _tables(source, first, second)
+    sides = []
+    for table, plan in zip(tables, (first, second), strict=True):
+        check_plan(table, plan)
+        weight, _ = weighted_rows(table, plan.beams, beams)
+        selected = apply_cuts(table, plan).selected & (weight != 0)
+        sides.append(Rows(table, selected, weight))
+    return compare(*sides)
+
+
+def _tables(
+    source: Any, first: StudyPlan, second: StudyPlan
+) -> tuple[EventTable, EventTable]:
+    """Return a table for each plan."""
+    same = first.reconstruct_hash == second.reconstruct_hash
+    if isinstance(source, ak.Array):
+        table = reconstruct(source, first)
+        return table, table if same else reconstruct(source, second)
+    if isinstance(source, EventTable):
+        if not same:
+            msg = (
+                "comparison: the plans reconstruct differently, so a table for each is "
+                "required; got one; give the events, or a pair of tables"
+            )
+            raise StudyError(msg)
+        return source, source
+    one, other = source
+    return one, other
