@@ -78,7 +78,18 @@ def test_files_are_complete_and_described(recipe, tmp_path):
         assert sample.generated == sample.stored == source.entries == n
         assert content_checksum(source.read()) == sample.checksum
     visible = {p.name for p in (tmp_path / "out").iterdir() if p.name[0] != "."}
-    assert visible == {"left.root", "right.root"}
+    assert visible == {"left.root", "right.root", "catalogue.toml"}
+
+
+def test_catalogue_beside_the_samples_can_be_opened_and_weighted(recipe, tmp_path):
+    made = produce(recipe, tmp_path, part_size=100)
+    source = open_events(tmp_path / "catalogue.toml")
+    assert [sample.name for sample in source.samples] == ["left", "right"]
+    for sample, known in zip(source.samples, made, strict=True):
+        (alone,) = open_events(known.path).samples
+        section = "cross_section_lr" if alone.helicity < 0 else "cross_section_rl"
+        assert getattr(sample, section) == getattr(alone, section) > 0
+        assert sample.normalisation == known.generated
 
 
 @pytest.mark.parametrize("size", [1_000, 130, 64, 33])
