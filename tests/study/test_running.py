@@ -192,3 +192,36 @@ def test_reconstruction_of_no_events_gives_an_empty_table(study_files, study_pla
     assert isinstance(table, EventTable)
     assert len(table) == 0
     assert list(table) == list(reconstruct(events[:5], study_plan))
+
+
+def test_a_worker_is_told_of_its_own_file_only(study_files, study_plan):
+    """Descriptions of thousands of files would be sent with every chunk."""
+    executor = _Shuffled(1)
+    run_study(study_files, study_plan, chunk_size=150, executor=executor)
+    for _, _, (ref, description) in executor.jobs:
+        assert [file.path for file in description.files] == [ref.path]
+
+
+def test_results_are_added_as_soon_as_those_before_them_are_there(
+    study_files, study_plan, monkeypatch
+):
+    """Sums of all chunks must not pile up."""
+    from toprecon.study import running
+
+    added = []
+    original = running.summarise_chunk
+
+    def counting(ref, description, plan, parts=None):
+        added.append(("made", ref.start))
+        return original(ref, description, plan, parts)
+
+    class Sums(running.InputReport):
+        def __add__(self, other):
+            added.append(("added", None))
+            return super().__add__(other)
+
+    monkeypatch.setattr(running, "summarise_chunk", counting)
+    monkeypatch.setattr(running, "InputReport", Sums)
+    run_study(study_files[0], study_plan, chunk_size=300)
+    kinds = [kind for kind, _ in added]
+    assert kinds.index("added") < len(kinds) - 1 - kinds[::-1].index("made")

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+import dataclasses
 import functools
 import os
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from concurrent.futures import Executor, as_completed
 from pathlib import Path
 from typing import Any
@@ -30,6 +31,7 @@ CHUNK_SIZE = 50_000
 """Events per chunk: the fastest size that keeps memory small."""
 
 Progress = Callable[[int, int], Any]
+_Outcome = tuple[StudySums, InputReport]
 
 
 def run_study(
@@ -84,30 +86,27 @@ def run_study(
             return finish(summarise(EventTable.load(paths[0]), plan), plan)
         one = paths[0] if len(paths) == 1 else paths  # one path may be a catalogue
         source = open_events(one, layout=layout, catalogue=catalogue)
-    refs = source.references(chunk_size)
+    refs = sorted(source.references(chunk_size))
     check_references(refs)
-    sums: dict[ChunkRef, StudySums] = {}
-    reports: dict[ChunkRef, InputReport] = {}
+    description = source.description
+    # a worker is told of its own file only: there may be thousands
+    alone = {
+        file.key: dataclasses.replace(description, files=(file,), messages=())
+        for file in description.files
+    }
     work = functools.partial(
-        summarise_chunk,
-        plan=plan,
-        description=source.description,
-        parts=None if parts is None else os.fspath(parts),
+        summarise_chunk, plan=plan, parts=None if parts is None else os.fspath(parts)
     )
-    for ref, (part, report) in _results(refs, work, executor):
-        sums[ref], reports[ref] = part, report
-        if progress is not None:
-            progress(len(sums), len(refs))
-    total = InputReport(messages=source.description.messages)
-    for ref in sorted(reports):
-        total = total + reports[ref]
-    return finish(merge(sums), plan, report=total, inputs=source.fingerprints)
+    jobs = {ref: alone[(ref.path, ref.tree, ref.fingerprint)] for ref in refs}
+    sums, report = _added(_results(jobs, work, executor), refs, progress)
+    report = InputReport(messages=description.messages) + report
+    return finish(sums, plan, report=report, inputs=source.fingerprints)
 
 
 def summarise_chunk(
     ref: ChunkRef,
-    plan: StudyPlan,
     description: SourceDescription,
+    plan: StudyPlan,
     parts: str | None = None,
 ) -> tuple[StudySums, InputReport]:
     """Reconstruct and sum one chunk; what a worker does.
@@ -116,10 +115,10 @@ def summarise_chunk(
     ----------
     ref : ChunkRef
         Entries of one file.
+    description : SourceDescription
+        The source the chunk belongs to; of its files, this one is enough.
     plan : StudyPlan
         The plan.
-    description : SourceDescription
-        The source the chunk belongs to.
     parts : str, optional
         Folder of finished parts.
 
@@ -132,20 +131,44 @@ def summarise_chunk(
     return summarise(table, plan), report
 
 
-def _results(
+def _added(
+    results: Iterable[tuple[ChunkRef, _Outcome]],
     refs: Sequence[ChunkRef],
-    work: Callable[[ChunkRef], tuple[StudySums, InputReport]],
+    progress: Progress | None,
+) -> _Outcome:
+    """Add results in the order of ``refs``, keeping only those that come too early."""
+    early: dict[ChunkRef, _Outcome] = {}
+    total: StudySums | None = None
+    report = InputReport()
+    position = 0
+    for done, (ref, outcome) in enumerate(results, 1):
+        early[ref] = outcome
+        while position < len(refs) and refs[position] in early:
+            sums, part = early.pop(refs[position])
+            total = sums if total is None else total + sums
+            report = report + part
+            position += 1
+        if progress is not None:
+            progress(done, len(refs))
+    if total is None:
+        total = merge({})  # says that there is nothing
+    return total, report
+
+
+def _results(
+    jobs: Mapping[ChunkRef, SourceDescription],
+    work: Callable[[ChunkRef, SourceDescription], _Outcome],
     executor: Executor | None,
-) -> Iterable[tuple[ChunkRef, tuple[StudySums, InputReport]]]:
+) -> Iterable[tuple[ChunkRef, _Outcome]]:
     """Work through the chunks, in order or as they are completed."""
     if executor is None:
-        for ref in refs:
-            yield ref, work(ref)
+        for ref, description in jobs.items():
+            yield ref, work(ref, description)
         return
-    futures = {executor.submit(work, ref): ref for ref in refs}
+    futures = {executor.submit(work, ref, d): ref for ref, d in jobs.items()}
     try:
-        for future in as_completed(futures):
-            yield futures[future], future.result()
+        for future in as_completed(list(futures)):
+            yield futures.pop(future), future.result()  # forgotten once it is added
     finally:
         for future in futures:
             future.cancel()
