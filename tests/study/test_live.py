@@ -16,10 +16,10 @@ from toprecon.study import (
     StudyPlan,
     apply_cuts,
     finish,
+    live_source,
     reconstruct,
     summarise,
 )
-from toprecon.study import live as live_module
 
 PLAN = StudyPlan().with_cut("pairing.chi2", high=40)
 
@@ -84,7 +84,7 @@ def test_a_cut_does_not_reconstruct_but_a_pairing_option_does(events, monkeypatc
         calls.append(args)
         return reconstruct(*args)
 
-    monkeypatch.setattr(live_module, "reconstruct", counted)
+    monkeypatch.setattr(live_source, "reconstruct", counted)
     live = LiveStudy(events, PLAN, synchronous=True)
     assert len(calls) == 1
     live.set_cut("pairing.chi2", high=5)
@@ -195,7 +195,7 @@ def test_listeners_never_overlap(live):
 
 
 def test_stop_gives_up_between_chunks_and_resume_goes_on(events, monkeypatch):
-    monkeypatch.setattr(live_module, "CHUNK", 1000)
+    monkeypatch.setattr(live_source, "CHUNK", 1000)
     stopped = threading.Event()
 
     def slow(part, plan):
@@ -203,7 +203,7 @@ def test_stop_gives_up_between_chunks_and_resume_goes_on(events, monkeypatch):
         stopped.set()
         return reconstruct(part, plan)
 
-    monkeypatch.setattr(live_module, "reconstruct", slow)
+    monkeypatch.setattr(live_source, "reconstruct", slow)
     live = None
     start = threading.Event()
     original = LiveStudy._work
@@ -219,7 +219,7 @@ def test_stop_gives_up_between_chunks_and_resume_goes_on(events, monkeypatch):
         live.wait()
     assert stopped.is_set()
     assert live.progress == (0, 0)
-    monkeypatch.setattr(live_module, "reconstruct", reconstruct)
+    monkeypatch.setattr(live_source, "reconstruct", reconstruct)
     live.resume()
     assert live.wait().cut_flow.counts[0] == len(events)
     assert live.progress == (len(events), len(events))
@@ -273,6 +273,38 @@ def test_closed_study_has_no_thread(table):
     live.wait()
     live.close()
     assert not any(t.name == "toprecon-live" for t in threading.enumerate())
+
+
+def test_one_event_is_the_row_of_the_table(events, tmp_path, monkeypatch):
+    monkeypatch.setattr(live_source, "CHUNK", 1000)
+    part = events[:2500]
+    path = toprecon.io.write_events(part, tmp_path / "events.root")
+    memory = LiveStudy(part, PLAN, synchronous=True)
+    files = LiveStudy(path, PLAN, synchronous=True)
+    for row in (0, 999, 1000, 2499, 3):
+        a, b = memory.view_event(row), files.view_event(row)
+        assert a.facts == b.facts
+        assert np.allclose(a.objects[0].momentum, b.objects[0].momentum)
+        cosine = files.table["cos_theta_reco"][row]
+        if np.isfinite(cosine):
+            text = f"cos θ reconstructed {cosine:+.3f}".replace("-", "−")
+            assert text in b.facts
+    with pytest.raises(StudyError, match="row: must be from 0 to 2499; got 2500"):
+        files.view_event(2500)
+    memory.close()
+    files.close()
+
+
+def test_one_event_needs_events(still):
+    with pytest.raises(StudyError, match="the study was given a saved table"):
+        still.view_event(3)
+
+
+def test_snapshot_holds_what_is_shown(still):
+    table, plan = still.snapshot()
+    still.set_cut("pairing.chi2", high=5)
+    assert plan == PLAN
+    assert table is still.table
 
 
 def test_finish_of_full_sums_is_what_a_settled_study_shows(live, table):

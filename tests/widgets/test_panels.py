@@ -172,9 +172,9 @@ def test_angle_shows_further_variants_on_demand(desk):
 
 
 def test_progress_is_shown_while_events_are_reconstructed(events, monkeypatch):
-    from toprecon.study import live as live_module
+    from toprecon.study import live_source
 
-    monkeypatch.setattr(live_module, "CHUNK", 500)
+    monkeypatch.setattr(live_source, "CHUNK", 500)
     panel = widgets.AnglePanel(events, PLAN)
     seen = []
     panel.shared.progress.layout.observe(

@@ -11,31 +11,39 @@ from __future__ import annotations
 
 from toprecon.figures.angle import AngleFigure, angle_figure, usual_variants
 from toprecon.figures.budget import budget_figure
+from toprecon.figures.comparison import comparison_figure
 from toprecon.figures.cuts import (
     CutFigure,
     class_legend,
     cut_flow_figure,
     distribution_figure,
 )
+from toprecon.figures.event import EventObject, EventView, event_figure
 from toprecon.figures.flips import flip_figure
 from toprecon.figures.live import LiveFigure
 from toprecon.figures.matrix import matrix_figure
 from toprecon.figures.pairing import class_figure, purity_figure
+from toprecon.figures.scan import scan_figure
 from toprecon.figures.style import png
 
 __all__ = [
     "AngleFigure",
     "CutFigure",
+    "EventObject",
+    "EventView",
     "LiveFigure",
     "angle_figure",
     "budget_figure",
     "class_figure",
     "class_legend",
+    "comparison_figure",
     "cut_flow_figure",
     "distribution_figure",
+    "event_figure",
     "flip_figure",
     "matrix_figure",
     "png",
     "purity_figure",
+    "scan_figure",
     "usual_variants",
 ]

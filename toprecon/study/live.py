@@ -12,31 +12,28 @@ tests and notebooks that run without anybody watching.
 
 from __future__ import annotations
 
-import os
+import functools
 import threading
 from collections import OrderedDict
 from collections.abc import Callable
 from typing import Any
 
-import awkward as ak
 import numpy as np
 from numpy.typing import NDArray
 
-from toprecon.errors import InputError, StudyError
+from toprecon.errors import StudyError
 from toprecon.events import Binning, EventTable
-from toprecon.io import EventSource, open_events
+from toprecon.figures import EventView
 from toprecon.study.distributions import TableMasks
+from toprecon.study.live_source import LiveSource
 from toprecon.study.moving import moved_sums
+from toprecon.study.one_event import view_event
 from toprecon.study.plan import StudyPlan
-from toprecon.study.reconstruction import reconstruct
 from toprecon.study.result import StudyResult, finish
 from toprecon.study.sums import StudySums, check_plan, summarise
 
 TABLES_KEPT = 3
 RESULTS_KEPT = 64
-CHUNK = 20_000
-"""Events per chunk: small, so that progress shows and a stop is quick."""
-
 PAUSE = 0.3
 """Seconds without a change after which the study settles."""
 
@@ -74,15 +71,15 @@ class LiveStudy:
     ) -> None:
         self.lock = threading.RLock()
         self.synchronous = synchronous
-        self._source = _opened(source, layout, catalogue)
+        self._source = LiveSource(source, layout, catalogue)
         self._plan = plan or StudyPlan()
         self._tables: OrderedDict[str, EventTable] = OrderedDict()
         self._results: OrderedDict[str, StudyResult] = OrderedDict()
         self._masks: tuple[EventTable, TableMasks] | None = None
         self._sums: tuple[StudyPlan, StudySums] | None = None
-        if isinstance(self._source, EventTable):
-            check_plan(self._source, self._plan)
-            self._tables[self._plan.reconstruct_hash] = self._source
+        if isinstance(self.source, EventTable):
+            check_plan(self.source, self._plan)
+            self._tables[self._plan.reconstruct_hash] = self.source
         self._listeners: list[Listener] = []
         self._changed = threading.Condition()  # guards the wishes, never held long
         self._wanted = True
@@ -110,12 +107,12 @@ class LiveStudy:
     @property
     def source(self) -> Any:
         """The event table, source or events studied."""
-        return self._source
+        return self._source.source
 
     @property
     def can_reconstruct(self) -> bool:
         """Whether there are events, so that the reconstruct part can be edited."""
-        return not isinstance(self._source, EventTable)
+        return self._source.can_reconstruct
 
     @property
     def error(self) -> Exception | None:
@@ -310,6 +307,36 @@ class LiveStudy:
                 plan, factors, observable, binning
             )
 
+    def snapshot(self) -> tuple[EventTable, StudyPlan]:
+        """Return the table and the plan of the result shown, to compare with later."""
+        with self.lock:
+            return self.table, self.shown_plan or self._plan
+
+    def view_event(self, row: int) -> EventView:
+        """Look at one event of the table shown.
+
+        Parameters
+        ----------
+        row : int
+            Row of the table.
+
+        Returns
+        -------
+        EventView
+            Ready for :func:`toprecon.figures.event_figure`.
+
+        Raises
+        ------
+        StudyError
+            If there is no such row, or the study has a table but no events.
+        """
+        with self.lock:
+            table, plan = self.table, self.shown_plan or self._plan
+        if not 0 <= row < len(table):
+            msg = f"row: must be from 0 to {len(table) - 1}; got {row}"
+            raise StudyError(msg)
+        return view_event(self._source.event(row), plan)
+
     def selected(self) -> NDArray[np.bool_]:
         """Return which rows of the table pass everything, shape (E,)."""
         with self.lock:
@@ -406,7 +433,7 @@ class LiveStudy:
             known = self._results.get(plan.hash)
             table = self._tables.get(plan.reconstruct_hash)
         if table is None:
-            table = self._reconstruct(plan)
+            table = self._source.table(plan, functools.partial(self._report, plan))
             with self.lock:
                 _keep(self._tables, plan.reconstruct_hash, table, TABLES_KEPT)
         if known is not None:
@@ -419,54 +446,24 @@ class LiveStudy:
         full = moved is None
         sums = summarise(table, plan) if moved is None else moved
         self._sums = (plan, sums)
-        report, inputs = None, {}
-        if isinstance(self._source, EventSource):
-            report, inputs = self._source.report, self._source.fingerprints
+        report, inputs = self._source.origin
         result = finish(sums, plan, report=report, inputs=inputs)
         if full:
             with self.lock:
                 _keep(self._results, plan.hash, result, RESULTS_KEPT)
         return result, full
 
-    def _reconstruct(self, plan: StudyPlan) -> EventTable:
-        """Make the table, chunk by chunk, unless something newer is wanted."""
-        source = self._source
-        if isinstance(source, EventTable):
-            check_plan(source, plan)
-            return source
-        if isinstance(source, ak.Array):
-            n = len(source)
-            chunks: Any = (source[i : i + CHUNK] for i in range(0, n, CHUNK))
-        else:
-            n, chunks = source.entries, source.chunks(CHUNK)
-        tables = []
-        done = 0
-        for events in chunks:
-            self._report_progress(done, n)
-            self._check_still_wanted(plan)
-            tables.append(reconstruct(events, plan))
-            done += len(events)
-        self._report_progress(n, n)
-        if not tables:
-            msg = "study: at least one event is required; the files hold none"
-            raise InputError(msg)
-        if isinstance(source, ak.Array):
-            return _joined(tables)
-        return EventTable.concatenate(tables)
-
-    def _report_progress(self, done: int, total: int) -> None:
-        self._progress = (done, total)
-        if not self.synchronous:
-            with self.lock:
-                self._tell()
-
-    def _check_still_wanted(self, plan: StudyPlan) -> None:
-        """Give up if the plan was replaced by one that needs another table."""
+    def _report(self, plan: StudyPlan, done: int, total: int) -> None:
+        """Show the progress; give up if another table is wanted."""
         with self._changed:
             newer = self._plan.reconstruct_hash != plan.reconstruct_hash
             if self._closed or self._stopped or (self._wanted and newer):
                 self._progress = (0, 0)
                 raise _GivenUp
+        self._progress = (done, total)
+        if not self.synchronous:
+            with self.lock:
+                self._tell()
 
 
 def _keep(cache: OrderedDict[str, Any], key: str, value: Any, most: int) -> None:
@@ -475,21 +472,3 @@ def _keep(cache: OrderedDict[str, Any], key: str, value: Any, most: int) -> None
     cache.move_to_end(key)
     while len(cache) > most:
         cache.popitem(last=False)
-
-
-def _opened(source: Any, layout: Any, catalogue: Any) -> Any:
-    """Return a table, source or events for whatever names one."""
-    if isinstance(source, (EventTable, EventSource, ak.Array)):
-        return source
-    if isinstance(source, (str, os.PathLike)):
-        path = os.fspath(source)
-        if path.endswith(".parquet") and EventTable.is_saved(path):
-            return EventTable.load(path)
-    return open_events(source, layout=layout, catalogue=catalogue)
-
-
-def _joined(tables: list[EventTable]) -> EventTable:
-    """Join tables of slices of one array, whose samples describe the whole of it."""
-    first = tables[0]
-    columns = {n: np.concatenate([t[n] for t in tables]) for n in first.columns}
-    return EventTable(columns, first.samples, first.stages, first.provenance)
