@@ -173,6 +173,20 @@ def test_a_file_made_otherwise_is_not_replaced_unless_asked(recipe, counted, tmp
     assert {name for name, *_ in counted} == {"right"}
 
 
+def test_somebodys_own_catalogue_is_not_replaced_unless_asked(recipe, tmp_path):
+    mine = tmp_path / "catalogue.toml"
+    mine.write_text("# my own\n")
+    with pytest.raises(
+        StudyError, match=r"catalogue.toml: a new file is required, but"
+    ):
+        produce(recipe, tmp_path)
+    assert mine.read_text() == "# my own\n"
+    assert not (tmp_path / "left.root").exists()
+    produce(recipe, tmp_path, replace=True)
+    assert "left" in mine.read_text()
+    produce(recipe, tmp_path)
+
+
 def test_progress_is_told_per_sample(recipe, tmp_path):
     seen = []
     produce(recipe, tmp_path, part_size=60, progress=lambda *x: seen.append(x))
@@ -291,7 +305,7 @@ def test_records_of_finished_samples_can_be_lost(recipe, tmp_path):
     first = produce(recipe, tmp_path)
     for record in (tmp_path / ".parts").glob("*.json"):
         record.write_text("damaged")
-    with pytest.raises(StudyError, match="is not what the recipe makes"):
+    with pytest.raises(StudyError, match="is not known to be what the recipe"):
         produce(recipe, tmp_path)
     again = produce(recipe, tmp_path, replace=True)
     assert _checksums(again) == _checksums(first)

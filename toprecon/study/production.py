@@ -215,20 +215,36 @@ def produce(
     target.mkdir(parents=True, exist_ok=True)
     jobs = [_Job(sample, recipe.mantissa_bits, target) for sample in recipe.samples]
     finished = [job.finished() for job in jobs]
-    for job, known in zip(jobs, finished, strict=True):
-        if known is None and job.path.exists() and not replace:
-            msg = (
-                f"{job.path}: a new file is required, but this exists and is not what "
-                "the recipe makes; choose another folder or allow replacing it "
-                "(replace=True, --replace)"
-            )
-            raise StudyError(msg)
+    foreign = [
+        job.path
+        for job, known in zip(jobs, finished, strict=True)
+        if known is None and job.path.exists()
+    ]
+    foreign += [
+        target / name
+        for name in sorted({sample.catalogue for sample in recipe.samples})
+        if not _is_ours(target / name)
+    ]
+    if foreign and not replace:
+        msg = (
+            f"{foreign[0]}: a new file is required, but this exists and is not known "
+            "to be what the recipe makes; choose another folder or allow replacing it "
+            "(replace=True, --replace)"
+        )
+        raise StudyError(msg)
     made = [
         known or _produce(job, part_size, progress, executor)
         for job, known in zip(jobs, finished, strict=True)
     ]
     _write_catalogues(recipe, made, target)
     return made
+
+
+def _is_ours(catalogue: Path) -> bool:
+    """Whether a catalogue is absent, or written here before."""
+    if not catalogue.exists():
+        return True
+    return catalogue.read_bytes().startswith(CATALOGUE_HEADER.encode())
 
 
 def _write_catalogues(recipe: Recipe, made: list[Produced], folder: Path) -> None:
