@@ -89,7 +89,8 @@ def test_wrong_setting_is_one_sentence_and_goes_away(desk, expect):
 
 def test_every_panel_shows_its_figure(desk, expect):
     old = picture_of(desk).get_attribute("src")
-    for title in ("Pairing", "Migration", "Events", "Angle"):
+    titles = ("Pairing", "Scan", "Migration", "One event", "Events", "Angle")
+    for title in titles:
         button = desk.get_by_role("button", name=title, exact=True)
         button.focus()
         desk.keyboard.press("Enter")
@@ -102,6 +103,20 @@ def test_every_panel_shows_its_figure(desk, expect):
         expect(picture_of(desk)).not_to_have_attribute("src", old)
         old = picture_of(desk).get_attribute("src")
         photograph(desk, f"view {view}")
+
+
+def test_kept_plan_is_compared_after_a_change(desk, expect):
+    desk.get_by_role("button", name="Compare", exact=True).click()
+    desk.get_by_role("button", name="keep this plan").click()
+    box = desk.get_by_role("spinbutton", name="below", exact=True)
+    box.fill("10")
+    box.press("Enter")
+    expect(desk.get_by_text("events selected by both").last).to_be_visible()
+    expect(desk.get_by_text("kept: StudyPlan().with_cut")).to_contain_text("high=50")
+    photograph(desk, "panel Compare")
+    desk.get_by_role("button", name="Boosted", exact=True).click()
+    expect(desk.get_by_text("Choose a branch with fat jets")).to_be_visible()
+    photograph(desk, "panel Boosted")
 
 
 def test_cut_is_added_from_the_list_and_beams_are_chosen(desk, expect):

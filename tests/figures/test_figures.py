@@ -13,7 +13,7 @@ from toprecon.figures import style
 from toprecon.figures.angle import CENTRES
 from toprecon.migration import MigrationOptions
 from toprecon.statistics import Measured
-from toprecon.study import OBSERVABLES, Binning
+from toprecon.study import OBSERVABLES, Binning, ScanAxis, compare_plans, scan_cuts
 
 CAPTION = "simulated events; statistical errors only"
 CHI2 = next(item for item in OBSERVABLES if item.name == "pairing.chi2")
@@ -37,6 +37,14 @@ def all_figures(beams, live):
     bins = Binning.regular(40, 0, 50)
     classes = live.distribution("pairing.chi2", bins)
     a = beams.asymmetry
+    axes = [
+        ScanAxis.spread(name, live.table[name], n=20, keep=keep)
+        for name, keep in (("pairing.chi2", "below"), ("pairing.share", "above"))
+    ]
+    scans = [scan_cuts(live.table, live.plan, *axes[:n]) for n in (1, 2)]
+    other = live.plan.with_cut("pairing.chi2", high=6)
+    comparison = compare_plans(live.table, live.plan, other)
+    selected = np.flatnonzero(live.selected())
     return {
         "angle": figures.angle_figure(a, caption=CAPTION),
         "budget": figures.budget_figure(a.budget, caption=CAPTION),
@@ -45,6 +53,10 @@ def all_figures(beams, live):
         "flow": figures.cut_flow_figure(beams.cut_flow, caption=CAPTION),
         "matrix": figures.matrix_figure(beams.migration, caption=CAPTION),
         "distribution": figures.distribution_figure(CHI2, bins, classes, caption=CAPTION),
+        "scan": figures.scan_figure(scans[0], best=scans[0].best, caption=CAPTION),
+        "scan of two": figures.scan_figure(scans[1], best=scans[1].best, caption=CAPTION),
+        "comparison": figures.comparison_figure(comparison, caption=CAPTION),
+        "event": figures.event_figure(live.view_event(selected[0]), caption=CAPTION),
         "purity": figures.purity_figure(CHI2, bins, classes, caption=CAPTION),
     }  # fmt: skip
 
@@ -59,6 +71,7 @@ def written_boxes(figure):
     figure.canvas.draw()
     renderer = figure.canvas.get_renderer()
     items = [item for legend in figure.legends for item in legend.get_texts()]
+    items += figure.texts
     for axes in figure.axes:
         items += [*axes.texts, axes._left_title, axes.xaxis.label, axes.yaxis.label]
         if axes.axison:
@@ -204,6 +217,44 @@ def test_purity_is_the_share_of_right_pairings_kept(beams):
     assert np.allclose(kept, [0.5, 0.75, 0.9, 1])
     axes = figures.purity_figure(CHI2, bins, classes, is_upper=False).axes[0]
     assert np.allclose(axes.lines[2].get_ydata(), [1, 0.5, 0.25, 0.1])
+
+
+def test_comparison_shows_both_values_and_the_paired_difference(live):
+    other = live.plan.with_cut("pairing.chi2", high=6)
+    comparison = compare_plans(live.table, live.plan, other)
+    words = texts(figures.comparison_figure(comparison, names=("wide", "tight")))
+    item = comparison["reconstructed"]
+    assert {"wide", "tight"} <= set(words)
+    assert style.pm(item.first) in words
+    assert style.pm(item.second) in words
+    assert style.pm(item.difference, sign=True) in words
+
+
+def test_scan_marks_the_point_chosen(live):
+    axis = ScanAxis.spread("pairing.chi2", live.table["pairing.chi2"], n=30)
+    scan = scan_cuts(live.table, live.plan, axis)
+    left, right = figures.scan_figure(scan, best=scan.best).axes
+    marked = axis.points[scan.best.index[0]]
+    assert any(np.allclose(line.get_xdata(), marked) for line in right.lines)
+    total = right.lines[0].get_ydata()
+    assert np.allclose(total, scan.everything.total_error[:, 0], equal_nan=True)
+    assert left.get_xlabel() == "efficiency"
+
+
+def test_event_lists_every_object_with_both_assignments(live):
+    row = int(np.flatnonzero(live.selected() & (live.table["pairing_class"] == 4))[0])
+    view = live.view_event(row)
+    words = texts(figures.event_figure(view))
+    for item in view.objects:
+        assert item.name in words
+    assigned = [item.side for item in view.objects if item.role == "b"]
+    generated = [item.true_side for item in view.objects if item.true_role == "b"]
+    assert sorted(assigned) == sorted(generated) == ["antitop", "top"]
+    for item in view.objects:  # b jets swapped, nothing else
+        if item.role == "b" and item.true_role == "b":
+            assert item.side != item.true_side
+    assert "pairing: b swapped" in words
+    assert len(view.generated) == 6
 
 
 def test_numbers_are_written_with_their_error():

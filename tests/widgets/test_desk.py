@@ -142,7 +142,10 @@ def test_plan_and_hand_off_are_written(desk):
     assert "a hand-off is there already" in desk.errors.text
 
 
-@pytest.mark.parametrize("title", ["Angle", "Pairing", "Migration", "Events"])
+@pytest.mark.parametrize(
+    "title",
+    ["Angle", "Pairing", "Scan", "Migration", "One event", "Events", "Compare"],
+)
 def test_code_shown_runs_and_gives_the_same_plan(desk, title, events):
     desk.cuts.rows["pairing.chi2"].slider.value = (0, 9)
     panel = show(desk, title)

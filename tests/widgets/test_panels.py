@@ -139,12 +139,7 @@ def test_distribution_and_purity_follow_the_observable_chosen(desk):
     desk.view.value = "Pairing"
     desk.panel.view.value = "purity against a cut"
     before = desk.panel.picture.widget.value
-    gap = next(
-        o
-        for o in dict(desk.panel.observable.options).values()
-        if o.name == "pairing.gap"
-    )
-    desk.panel.observable.value = gap
+    desk.panel.observable.value = "pairing.gap"
     assert desk.panel.picture.widget.value != before
     assert "pairing.gap" in desk.panel.python()
 
@@ -190,3 +185,117 @@ def test_progress_is_shown_while_events_are_reconstructed(events, monkeypatch):
         assert any("reconstructing: 500 of 3,000 events" in text for text in said)
     finally:
         panel.close()
+
+
+def test_best_point_of_a_scan_goes_into_the_plan(desk):
+    desk.view.value = "Scan"
+    panel = desk.panel
+    assert panel.picture.widget.value[:4] == b"\x89PNG"
+    assert "chosen on half A" in panel.best.value
+    panel.take.click()
+    (observable, low, high) = panel._point.cuts[0]
+    assert (low, high) == (None, desk.plan.cuts[0].high)
+    assert desk.cuts.rows[observable].high.value == pytest.approx(high)
+
+
+def test_second_cut_makes_the_scan_a_plane(desk):
+    desk.view.value = "Scan"
+    desk.panel.second.value = "pairing.share"
+    desk.panel.keep_second.value = "above"
+    assert len(desk.panel._point.cuts) == 2
+    assert 'keep="above"' in desk.panel.python()
+    desk.panel.first.value = "pairing.share"
+    assert "one or two different observables are required" in desk.errors.text
+    desk.panel.second.value = ""
+    desk.cuts.rows["pairing.chi2"].high.value = 39
+    assert desk.errors.text == ""
+    assert desk.panel.keep_first.value == "above"
+
+
+def test_scan_without_a_good_point_is_one_sentence(desk):
+    desk.view.value = "Scan"
+    desk.panel.smallest.value = 0.99
+    assert "a point with enough events is required" in desk.errors.text
+    before = desk.plan
+    desk.panel.take.click()
+    assert desk.plan == before
+
+
+def test_kept_plan_is_compared_with_the_present_one(desk):
+    desk.view.value = "Compare"
+    panel = desk.panel
+    assert "Keep the present plan" in panel.text.value
+    panel.keep.click()
+    kept = desk.plan
+    desk.cuts.rows["pairing.chi2"].slider.value = (0, 8)
+    assert panel.picture.widget.value[:4] == b"\x89PNG"
+    assert "events selected by both" in panel.text.value
+    panel.back.click()
+    assert desk.plan == kept
+    assert desk.cuts.rows["pairing.chi2"].high.value == 40
+
+
+def test_other_jets_can_be_compared_too(desk):
+    desk.view.value = "Compare"
+    desk.panel.keep.click()
+    desk.live.set_settings({"pairing.tags": "ignore"})
+    assert "events selected by both" in desk.panel.text.value
+    assert desk.errors.text == ""
+
+
+@pytest.mark.parametrize("kind", ["", "CORRECT", "B_SWAPPED", "FLIPPED"])
+def test_events_of_a_kind_are_shown_one_by_one(desk, kind):
+    desk.view.value = "One event"
+    panel = desk.panel
+    panel.kind.value = kind
+    assert panel.number.max == len(panel._rows) > 1
+    table = desk.table
+    assert desk.live.selected()[panel._rows].all()
+    if kind == "FLIPPED":
+        product = table["cos_theta_true"] * table["cos_theta_reco"]
+        assert (product[panel._rows] < 0).all()
+    before = panel.picture.widget.value
+    panel.number.value = 2
+    assert panel.picture.widget.value != before
+    assert desk.errors.text == ""
+
+
+def test_no_event_of_a_kind_is_said(desk):
+    desk.view.value = "One event"
+    desk.panel.kind.value = "UNMATCHED"  # partons are always matched
+    assert "no such event is selected" in desk.panel.of.value
+    assert desk.panel.row == -1
+
+
+def test_one_event_without_events_is_one_sentence(desk):
+    panel = widgets.EventPanel(desk.table, PLAN, synchronous=True)
+    assert "the study was given a saved table" in panel.errors.text
+    panel.close()
+
+
+def test_boosted_branch_without_particles_is_one_sentence_and_recovers(desk):
+    desk.view.value = "Boosted"
+    panel = desk.panel
+    assert "Choose a branch with fat jets" in panel.text.value
+    panel.branch.value = next(v for _, v in panel.branch.options if v == "boosted")
+    assert "particles" in desk.errors.text
+    panel.branch.value = next(v for _, v in panel.branch.options if v == "resolved")
+    assert desk.errors.text == ""
+
+
+def test_fat_jets_are_shown_for_events_with_particles(sample_folder):
+    plan = PLAN.with_settings({"study.branch": "boosted"}).replace(cuts=())
+    path = sample_folder / "lepjets_1500_LR.root"
+    panel = widgets.BoostedPanel(path, plan, synchronous=True)
+    assert panel.errors.text == ""
+    assert panel.picture.widget.value[:4] == b"\x89PNG"
+    assert "boosted." in panel.python()
+    panel.close()
+
+
+def test_only_observables_of_the_table_are_offered(desk):
+    offered = [name for _, name in desk.cuts.add.options]
+    assert "pairing.chi2" in offered
+    assert not any(name.startswith(("boosted.", "fit.")) for name in offered)
+    desk.live.set_settings({"fit.on": True})
+    assert any(name.startswith("fit.") for _, name in desk.cuts.add.options)

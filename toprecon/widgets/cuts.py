@@ -8,8 +8,9 @@ from typing import Any
 import ipywidgets
 
 from toprecon.figures import CutFigure, class_legend, png
-from toprecon.study import OBSERVABLES, Binning, CutOptions
+from toprecon.study import Binning, CutOptions
 from toprecon.widgets.base import Panel, Picture, close_all, helping, labelled
+from toprecon.widgets.observables import BY_NAME, offer
 
 STEPS = 200
 """Steps of a slider over the range of its observable."""
@@ -18,7 +19,7 @@ BINS = 50
 WIDTH = 390
 """Width of slider and distribution [px]."""
 
-BY_NAME = {item.name: item for item in OBSERVABLES}
+NOTHING = ("add a cut on ...", "")
 
 
 class CutRow:
@@ -174,7 +175,7 @@ class CutsPanel(Panel):
             format="png", layout=ipywidgets.Layout(width=f"{WIDTH}px")
         )
         self.add = ipywidgets.Dropdown(
-            options=[("add a cut on ...", ""), *_choices()],
+            options=[NOTHING],
             value="",
             layout=ipywidgets.Layout(width=f"{WIDTH}px"),
         )
@@ -195,6 +196,7 @@ class CutsPanel(Panel):
     def paint(self) -> None:
         """Show the limits; once the study settles, the distributions too."""
         self._follow_plan()
+        offer(self.add, self.live, NOTHING)
         for name, row in self.rows.items():
             limits = row.limits if row.on.value else (None, None)
             if self.live.is_settled or name not in self._shown:
@@ -273,8 +275,3 @@ class CutsPanel(Panel):
 
     def _arrange(self) -> None:
         self._box.children = [row.widget for row in self.rows.values()]
-
-
-def _choices() -> list[tuple[str, str]]:
-    """Observables by label."""
-    return [(item.axis_label, item.name) for item in OBSERVABLES]

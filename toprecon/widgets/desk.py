@@ -9,17 +9,25 @@ import ipywidgets
 from toprecon.study import EventTable, LiveStudy, StudyPlan, StudyResult
 from toprecon.widgets.angle import AnglePanel
 from toprecon.widgets.base import ErrorLine, Panel, Shared, close_all
+from toprecon.widgets.boosted import BoostedPanel
+from toprecon.widgets.comparing import ComparePanel
 from toprecon.widgets.cuts import CutsPanel
+from toprecon.widgets.event import EventPanel
 from toprecon.widgets.events import EventsPanel
 from toprecon.widgets.handing import HandOffPanel
 from toprecon.widgets.migration import MigrationPanel
 from toprecon.widgets.pairing import PairingPanel
+from toprecon.widgets.scan import ScanPanel
 
 PANELS: tuple[type[Panel], ...] = (
     AnglePanel,
     PairingPanel,
+    ScanPanel,
     MigrationPanel,
+    EventPanel,
     EventsPanel,
+    BoostedPanel,
+    ComparePanel,
     HandOffPanel,
 )
 
@@ -63,7 +71,7 @@ class Desk:
             self.view = ipywidgets.ToggleButtons(
                 options=list(self.panels),
                 value=AnglePanel.title,
-                style={"button_width": "8.5em", "font_weight": "600"},
+                style={"button_width": "6.6em", "font_weight": "600"},
                 layout=ipywidgets.Layout(margin="0 0 8px 0"),
             )
             self.view.observe(lambda _: self._choose(), names="value")

@@ -7,15 +7,14 @@ from typing import Any
 import ipywidgets
 
 from toprecon import figures
-from toprecon.study import OBSERVABLES, Binning
+from toprecon.study import Binning
 from toprecon.widgets.base import Panel, Picture, helping, labelled
 from toprecon.widgets.controls import OptionControls
+from toprecon.widgets.observables import BY_NAME, USUALLY_CUT_FROM_ABOVE, offer
 from toprecon.widgets.terms import TermControls
 
 CLASSES, DISTRIBUTION, PURITY = "classes", "distribution", "purity against a cut"
 BINS, FINE_BINS = 60, 240
-LOWER_IS_BETTER = ("pairing.chi2",)
-"""Observables that are usually cut from above; others from below."""
 
 
 class PairingPanel(Panel):
@@ -32,8 +31,8 @@ class PairingPanel(Panel):
         )
         self.observable = ipywidgets.Dropdown(
             description="of",
-            options=[(item.axis_label, item) for item in OBSERVABLES],
-            value=_named("pairing.chi2"),
+            options=[(item.axis_label, item.name) for item in BY_NAME.values()],
+            value="pairing.chi2",
             style={"description_width": "2em"},
             layout=ipywidgets.Layout(width="22em"),
         )
@@ -42,10 +41,12 @@ class PairingPanel(Panel):
             item.observe(lambda _: self.redraw(), names="value")
         self.terms = TermControls(self)
         self.settings = OptionControls(self, self.live.plan.pairing, "pairing")
+        self.fit = OptionControls(self, self.live.plan.fit, "fit")
         note = []
         if not self.live.can_reconstruct:
             self.terms.disable()
             self.settings.disable()
+            self.fit.disable()
             note = [
                 helping("fixed: the study runs on a saved event table, without events")
             ]
@@ -57,6 +58,8 @@ class PairingPanel(Panel):
             *note,
             self.terms.widget,
             self.settings.widget,
+            labelled("Constrained fit"),
+            self.fit.widget,
         ]
 
     def paint(self) -> None:
@@ -64,6 +67,8 @@ class PairingPanel(Panel):
         caption, view = self.shared.caption, self.view.value
         self.terms.follow(self.live.plan.pairing)
         self.settings.follow(self.live.plan.pairing)
+        self.fit.follow(self.live.plan.fit)
+        offer(self.observable, self.live)
         self.observable.layout.display = "none" if view == CLASSES else None
         if view == CLASSES:
             result = self.shared.result
@@ -76,7 +81,7 @@ class PairingPanel(Panel):
             return
         if not self.live.is_settled:
             return
-        observable = self.observable.value
+        observable = BY_NAME[self.observable.value]
         n = BINS if view == DISTRIBUTION else FINE_BINS
         binning = Binning.regular(n, *observable.range)
         classes = self.live.distribution(
@@ -96,7 +101,7 @@ class PairingPanel(Panel):
                 classes,
                 low=low,
                 high=high,
-                is_upper=observable.name in LOWER_IS_BETTER,
+                is_upper=observable.name in USUALLY_CUT_FROM_ABOVE,
                 caption=caption,
                 figure=figure,
             ),
@@ -111,7 +116,7 @@ class PairingPanel(Panel):
                 f"class_figure({beams}.asymmetry)\n"
                 f"{beams}.asymmetry.by_class"
             )
-        observable = self.observable.value
+        observable = BY_NAME[self.observable.value]
         low, high = observable.range
         n = BINS if self.view.value == DISTRIBUTION else FINE_BINS
         return (
@@ -127,8 +132,3 @@ class PairingPanel(Panel):
             if cut.observable == name:
                 return cut.low, cut.high
         return None, None
-
-
-def _named(name: str) -> Any:
-    """Observable of a name."""
-    return next(item for item in OBSERVABLES if item.name == name)
