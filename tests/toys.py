@@ -109,3 +109,10 @@ def toy_table(
 def selected(table):
     """Rows that pass the selection and are reconstructed."""
     return (table["stage"] == 0) & np.isfinite(table["cos_theta_reco"])
+
+
+def asymmetry_ratio(table, wanted, asymmetry=0.38):
+    """Ratio of the angular densities of two asymmetries, see :func:`draw_cosines`."""
+    c = np.nan_to_num(table["cos_theta_true"])
+    even = 0.375 * (1 + c**2)
+    return (even + wanted * c) / (even + asymmetry * c)

@@ -9,13 +9,13 @@ from __future__ import annotations
 
 from toprecon.migration.closure import (
     ClosureResult,
-    LinearityResult,
     accumulate_halves,
     check_closure,
-    check_linearity,
 )
 from toprecon.migration.hepdata import write_hepdata
 from toprecon.migration.histogram_json import read_histogram_json, write_histogram_json
+from toprecon.migration.influence import simulation_covariance
+from toprecon.migration.linearity import LinearityResult, check_linearity
 from toprecon.migration.matrix import MigrationMatrix, accumulate
 from toprecon.migration.npz import read_npz, write_npz
 from toprecon.migration.options import MigrationOptions
@@ -37,6 +37,7 @@ __all__ = [
     "read_histogram_json",
     "read_npz",
     "read_root",
+    "simulation_covariance",
     "unfold",
     "write_hepdata",
     "write_histogram_json",
