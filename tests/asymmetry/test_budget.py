@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 from tests.toys import selected, toy_table
 from toprecon.asymmetry import STEPS, accumulate
 from toprecon.events import PairingClass
+from toprecon.treelevel import beam_fractions
 
 CAUSES = {
     "acceptance": {"loss": 0.3},
@@ -197,3 +198,33 @@ def test_an_empty_table_has_missing_steps():
     assert math.isnan(budget.total.value)
     assert all(math.isnan(step.share) for step in budget.steps)
     assert str(budget["acceptance"].shift) == "missing"
+
+
+@given(
+    tables(),
+    tables(),
+    st.floats(1e-3, 1e3),
+    st.floats(1e-3, 1e3),
+    st.floats(-1, 1),
+    st.floats(-1, 1),
+)
+def test_the_steps_add_up_for_any_mix_of_beams(
+    left, right, s_l, s_r, electron, positron
+):
+    w_left, w_right = beam_fractions(electron, positron)
+    if w_left + w_right < 1e-3:
+        return  # nothing collides
+    parts = []
+    for table, factor in ((left, w_left * s_l), (right, w_right * s_r)):
+        # weights of one sign here: sums that cancel have no asymmetry
+        weight = np.abs(table["weight"]) + 0.1
+        parts.append(accumulate(table, selected(table), weight).scaled(factor))
+    budget = (parts[0] + parts[1]).result().budget
+    if math.isnan(budget.total.value):
+        return  # nothing selected
+    assert abs(budget.closure) < 1e-12
+    errors = np.array([step.shift.error for step in budget.steps])
+    assert math.sqrt(max(budget.covariance.sum(), 0.0)) == pytest.approx(
+        budget.total.error, abs=1e-9
+    )
+    assert np.isfinite(errors).all()
