@@ -27,6 +27,7 @@ from toprecon.events import (
 )
 from toprecon.io import describe, load_layout, open_events, write_events
 from toprecon.migration import UnfoldingOptions
+from toprecon.selection import VariationOptions, vary
 from toprecon.study.chunks import (
     check_references,
     part_path,
@@ -59,6 +60,7 @@ from toprecon.study.running import CHUNK_SIZE, run_study, summarise_chunk
 from toprecon.study.scanning import scan_cuts
 from toprecon.study.storing import content_checksum
 from toprecon.study.sums import StudySums, merge, summarise
+from toprecon.study.varying import variation_shifts
 from toprecon.study.weights import SampleFactors, sample_factors
 
 __all__ = [
@@ -97,6 +99,7 @@ __all__ = [
     "StudyResult",
     "StudySums",
     "UnfoldingOptions",
+    "VariationOptions",
     "angle_linearity",
     "apply_cuts",
     "bias_meaning",
@@ -127,6 +130,8 @@ __all__ = [
     "sentence_of",
     "summarise",
     "summarise_chunk",
+    "variation_shifts",
+    "vary",
     "write_events",
     "write_hand_off",
 ]
