@@ -13,7 +13,14 @@ from toprecon.figures import style
 from toprecon.figures.angle import CENTRES
 from toprecon.migration import MigrationOptions
 from toprecon.statistics import Measured
-from toprecon.study import OBSERVABLES, Binning, ScanAxis, compare_plans, scan_cuts
+from toprecon.study import (
+    OBSERVABLES,
+    Binning,
+    ScanAxis,
+    closure_of,
+    compare_plans,
+    scan_cuts,
+)
 
 CAPTION = "simulated events; statistical errors only"
 CHI2 = next(item for item in OBSERVABLES if item.name == "pairing.chi2")
@@ -56,6 +63,7 @@ def all_figures(beams, live):
         "scan": figures.scan_figure(scans[0], best=scans[0].best, caption=CAPTION),
         "scan of two": figures.scan_figure(scans[1], best=scans[1].best, caption=CAPTION),
         "comparison": figures.comparison_figure(comparison, caption=CAPTION),
+        "closure": figures.closure_figure(closure_of(live.table, live.plan), caption=CAPTION),
         "event": figures.event_figure(live.view_event(selected[0]), caption=CAPTION),
         "purity": figures.purity_figure(CHI2, bins, classes, caption=CAPTION),
     }  # fmt: skip
@@ -234,11 +242,21 @@ def test_scan_marks_the_point_chosen(live):
     axis = ScanAxis.spread("pairing.chi2", live.table["pairing.chi2"], n=30)
     scan = scan_cuts(live.table, live.plan, axis)
     left, right = figures.scan_figure(scan, best=scan.best).axes
-    marked = axis.points[scan.best.index[0]]
+    marked = scan.best.index[0]
     assert any(np.allclose(line.get_xdata(), marked) for line in right.lines)
     total = right.lines[0].get_ydata()
     assert np.allclose(total, scan.everything.total_error[:, 0], equal_nan=True)
     assert left.get_xlabel() == "efficiency"
+
+
+def test_closure_shows_the_residuals_over_their_errors(live):
+    closure = closure_of(live.table, live.plan)
+    upper, lower = figures.closure_figure(closure).axes
+    (pulls,) = [line for line in lower.lines if len(line.get_ydata()) > 2]
+    assert np.allclose(pulls.get_ydata(), closure.pulls)
+    generated = upper.patches[0].get_data().values
+    assert np.allclose(generated, closure.generated)
+    assert f"χ² {closure.chi2:.1f}" in upper.get_title(loc="left")
 
 
 def test_event_lists_every_object_with_both_assignments(live):

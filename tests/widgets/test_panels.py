@@ -151,6 +151,26 @@ def test_bins_of_the_matrix_can_be_chosen(desk):
     assert "in the matrix" in desk.panel.numbers.value
 
 
+def test_closure_test_says_how_well_it_closes(desk):
+    desk.view.value = "Migration"
+    desk.panel.view.value = "closure test"
+    seen = set()
+    for method in desk.panel.method.options:
+        desk.panel.method.value = method
+        seen.add(desk.panel.picture.widget.value)
+        assert "probability of a larger χ²" in desk.panel.numbers.value
+        assert desk.errors.text == ""
+    assert len(seen) == 3
+
+
+def test_meaning_of_the_shift_is_said_in_couplings(desk):
+    desk.panel.view.value = "causes of the shift"
+    assert "It would be mistaken for a change" in desk.panel.meaning.value
+    assert "standard deviations" not in desk.panel.meaning.value  # no luminosity
+    desk.live.set_settings({"beams.luminosity": 500.0})
+    assert desk.errors.text == ""
+
+
 def test_samples_and_cross_sections_are_listed(desk):
     desk.view.value = "Events"
     name = desk.result.samples[0].name

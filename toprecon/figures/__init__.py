@@ -11,6 +11,7 @@ from __future__ import annotations
 
 from toprecon.figures.angle import AngleFigure, angle_figure, usual_variants
 from toprecon.figures.budget import budget_figure
+from toprecon.figures.closure import closure_figure
 from toprecon.figures.comparison import comparison_figure
 from toprecon.figures.cuts import (
     CutFigure,
@@ -36,6 +37,7 @@ __all__ = [
     "budget_figure",
     "class_figure",
     "class_legend",
+    "closure_figure",
     "comparison_figure",
     "cut_flow_figure",
     "distribution_figure",

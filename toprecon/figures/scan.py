@@ -97,14 +97,18 @@ def _front(axes: Any, result: ScanResult, best: ScanPoint | None) -> None:
 
 def _curve(axes: Any, result: ScanResult, label: str, best: ScanPoint | None) -> None:
     """Total error, and what it is made of, against the cut."""
-    values, x = result.everything, np.array(result.axes[0].points)
+    values, points = result.everything, result.axes[0].points
+    x = np.arange(len(points))
     bias = np.sqrt(np.clip(values.squared_bias[:, 0], 0, None))
     axes.plot(x, values.total_error[:, 0], color=style.INK, label="total error")
     axes.plot(x, values.expected_error[:, 0], label="statistical", **style.SIGNAL_ONLY)
     axes.plot(x, bias, color=style.ORANGE, linestyle="-.", label="bias")
     if best is not None:
-        axes.axvline(x[best.index[0]], color=style.ORANGE, linewidth=1)
-    axes.set_ylim(bottom=0, top=1.5 * float(np.nanmax(values.total_error[-1:, 0])))
+        axes.axvline(best.index[0], color=style.ORANGE, linewidth=1)
+    considered = values.total_error[result.is_considered]
+    highest = float(np.nanmax(considered, initial=0)) or 1.0
+    axes.set_ylim(0, 1.35 * highest)
+    _label_points(axes.xaxis, points)
     axes.set_xlabel(f"cut on {label}")
     axes.legend(loc="upper right", frameon=False, fontsize=8.5, labelcolor=style.INK)
     style.heading(axes, f"error of {style.A_FB}")
@@ -130,12 +134,14 @@ def _plane(
     bar.outline.set_visible(False)
     if best is not None:
         axes.plot(*best.index, "D", color=style.ORANGE, markersize=6)
-    # points are spread by events, not by value: label some of them
-    for axis, scanned, n in zip(
-        (axes.xaxis, axes.yaxis), result.axes, sizes, strict=True
-    ):
-        marked = np.unique(np.linspace(0, n - 1, 5).round().astype(int))
-        axis.set_ticks(marked, [f"{scanned.points[k]:.3g}" for k in marked])
+    for axis, scanned in zip((axes.xaxis, axes.yaxis), result.axes, strict=True):
+        _label_points(axis, scanned.points)
     axes.set_xlabel(f"cut on {names[0]}")
     axes.set_ylabel(f"cut on {names[1]}", labelpad=2)
     style.heading(axes, f"total error of {style.A_FB}")
+
+
+def _label_points(axis: Any, points: tuple[float, ...]) -> None:
+    """Label some of the points, which are spread by events and not by value."""
+    marked = np.unique(np.linspace(0, len(points) - 1, 5).round().astype(int))
+    axis.set_ticks(marked, [f"{points[k]:.3g}" for k in marked])

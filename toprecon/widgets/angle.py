@@ -2,14 +2,27 @@
 
 from __future__ import annotations
 
+import html
+import math
 from typing import Any
 
 import ipywidgets
 
 from toprecon import figures
+from toprecon.errors import StudyError
+from toprecon.study import bias_meaning
 from toprecon.widgets.base import Panel, Picture
 
 SPECTRUM, CAUSES, FLIPS = "spectrum", "causes of the shift", "wrong hemisphere"
+
+COUPLINGS = {
+    "f1v_photon": "vector, photon",
+    "f1v_z": "vector, Z",
+    "f1a_z": "axial, Z",
+    "f2v_photon": "magnetic, photon",
+    "f2v_z": "weak magnetic, Z",
+}
+"""Form factors as people call them."""
 
 
 class AnglePanel(Panel):
@@ -42,13 +55,15 @@ class AnglePanel(Panel):
         self._made_for: Any = None
         for item in (self.view, self.chosen, self.closest):
             item.observe(lambda _: self.redraw(), names="value")
-        return [self.view, self._extras, self.picture.widget]
+        self.meaning = ipywidgets.HTML()
+        return [self.view, self._extras, self.picture.widget, self.meaning]
 
     def paint(self) -> None:
         """Draw the view chosen."""
         result, caption = self.shared.result, self.shared.caption
         view = self.view.value
         self._extras.layout.display = None if view == SPECTRUM else "none"
+        self.meaning.layout.display = None if view == CAUSES else "none"
         if view == SPECTRUM:
             self._paint_spectrum()
         elif view == CAUSES:
@@ -58,6 +73,8 @@ class AnglePanel(Panel):
                     result.asymmetry.budget, caption=caption, figure=figure
                 ),
             )
+            if self.live.is_settled:
+                self.meaning.value = self._meaning()
         else:
             self.picture.draw(
                 view,
@@ -80,6 +97,31 @@ class AnglePanel(Panel):
             f"{beams}.asymmetry.reconstructed, {beams}.asymmetry.shift"
         )
 
+    def _meaning(self) -> str:
+        """Return what the whole shift would be mistaken for, in HTML."""
+        try:
+            meaning = bias_meaning(self.live.result, self.shared.beams.value)
+        except StudyError as error:
+            return f'<p class="toprecon-help">{html.escape(str(error))}</p>'
+        deviations = meaning.standard_deviations
+        head = (
+            ""
+            if math.isnan(deviations.value)
+            else f"The whole shift is {_text(deviations)} standard deviations of the "
+            "expected data. "
+        )
+        rows = "".join(
+            f"<tr><td>{COUPLINGS.get(name, html.escape(name))}</td>"
+            f"<td>{_text(item.shift)}</td><td>{_share(item.relative)}</td></tr>"
+            for name, item in meaning.couplings.items()
+        )
+        return (
+            f'<p class="toprecon-status">{head}It would be mistaken for a change of '
+            f'one of these couplings:</p><table class="toprecon-table"><tr>'
+            f"<th>coupling of the top</th><th>change</th><th>of its value</th></tr>{rows}"
+            f'</table><p class="toprecon-help">{html.escape(meaning.caution)}</p>'
+        )
+
     def _paint_spectrum(self) -> None:
         """Move the curves; make the figure anew only if its rows change."""
         result, caption = self.shared.result, self.shared.caption
@@ -92,3 +134,13 @@ class AnglePanel(Panel):
             self._made_for = made_for
         self._live_figure.update(result.asymmetry, expected=result.is_expected)
         self.picture.show(self._live_figure)
+
+
+def _text(number: Any) -> str:
+    """Return a number with its error, for people."""
+    return str(number).replace("+-", "±").replace("-", "−")
+
+
+def _share(value: float) -> str:
+    """Return a share in per cent; nothing if it is not defined."""
+    return "" if math.isnan(value) else f"{100 * value:+.1f} %".replace("-", "−")

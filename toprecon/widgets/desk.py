@@ -71,7 +71,7 @@ class Desk:
             self.view = ipywidgets.ToggleButtons(
                 options=list(self.panels),
                 value=AnglePanel.title,
-                style={"button_width": "6.6em", "font_weight": "600"},
+                style={"button_width": "auto", "font_weight": "600"},
                 layout=ipywidgets.Layout(margin="0 0 8px 0"),
             )
             self.view.observe(lambda _: self._choose(), names="value")

@@ -2,17 +2,23 @@
 
 from __future__ import annotations
 
+import warnings
 from typing import Any
 
 import ipywidgets
 import numpy as np
 
 from toprecon import figures
+from toprecon.errors import NotClosingWarning
+from toprecon.study import UnfoldingOptions, closure_of
 from toprecon.widgets.base import Panel, Picture, helping
+
+MATRIX, CLOSURE = "matrix", "closure test"
+METHODS = ("inversion", "tikhonov", "bayes")
 
 
 class MigrationPanel(Panel):
-    """The migration matrix with purity, stability and efficiency."""
+    """The migration matrix with purity, stability and efficiency, and its closure."""
 
     title = "Migration"
 
@@ -20,6 +26,9 @@ class MigrationPanel(Panel):
         """Make the widgets, top to bottom."""
         edges = self.live.plan.migration.edges
         self._quiet = False
+        self.view = ipywidgets.ToggleButtons(
+            options=[MATRIX, CLOSURE], value=MATRIX, style={"button_width": "12.5em"}
+        )
         self.bins = ipywidgets.BoundedIntText(
             value=len(edges) - 1,
             min=2,
@@ -30,26 +39,58 @@ class MigrationPanel(Panel):
             layout=ipywidgets.Layout(width="13em"),
         )
         self.bins.observe(lambda event: self._rebin(event["new"]), names="value")
+        self.method = ipywidgets.Dropdown(
+            description="corrected by",
+            options=METHODS,
+            tooltip="half B is corrected with the response of half A",
+            style={"description_width": "7em"},
+            layout=ipywidgets.Layout(width="18em"),
+        )
+        for item in (self.view, self.method):
+            item.observe(lambda _: self.redraw(), names="value")
         self.picture = Picture()
         self.numbers = ipywidgets.HTML()
         return [
-            ipywidgets.HBox(
-                [self.bins, helping("equal bins; other edges can be set in the plan")]
-            ),
+            self.view,
+            ipywidgets.HBox([self.bins, self.method]),
+            helping("equal bins; other edges can be set in the plan"),
             self.picture.widget,
             self.numbers,
         ]
 
     def paint(self) -> None:
-        """Draw the matrix and say how hard it is to undo."""
-        matrix, caption = self.shared.result.migration, self.shared.caption
+        """Draw the view chosen."""
         n = len(self.live.plan.migration.edges) - 1
         if n != self.bins.value:  # changed elsewhere, perhaps to unequal bins
             self._quiet = True
             self.bins.value = n
             self._quiet = False
+        self.method.layout.display = None if self.view.value == CLOSURE else "none"
+        if self.view.value == MATRIX:
+            self._paint_matrix()
+        elif self.live.is_settled:
+            self._paint_closure()
+
+    def python(self) -> str:
+        """Return Python that gives what is shown."""
+        beams = self.shared.beams_code
+        if self.view.value == MATRIX:
+            return (
+                "from toprecon.figures import matrix_figure\n\n"
+                f"matrix_figure({beams}.migration)"
+            )
+        return (
+            "from toprecon.study import LiveStudy, UnfoldingOptions, closure_of\n\n"
+            "table = LiveStudy(source, plan, synchronous=True).table\n"
+            f'method = UnfoldingOptions(method="{self.method.value}")\n'
+            f'print(closure_of(table, plan, method, beams="{self.shared.beams.value}"))'
+        )
+
+    def _paint_matrix(self) -> None:
+        """Draw the matrix and say how hard it is to undo."""
+        matrix, caption = self.shared.result.migration, self.shared.caption
         self.picture.draw(
-            "matrix",
+            MATRIX,
             lambda figure: figures.matrix_figure(
                 matrix, caption=caption, figure=figure
             ),
@@ -63,17 +104,35 @@ class MigrationPanel(Panel):
             parts.append(f"{values.sum():,.0f} {name}")
         condition = matrix.condition
         number = f"{condition:.1f}" if np.isfinite(condition) else "not defined"
-        self.numbers.value = (
-            f'<div class="toprecon-status">{", ".join(parts)}; largest over smallest '
-            f"singular value of the response: {number}</div>"
+        self._say(
+            f"{', '.join(parts)}; largest over smallest singular value of the "
+            f"response: {number}"
         )
 
-    def python(self) -> str:
-        """Return Python that gives what is shown."""
-        return (
-            "from toprecon.figures import matrix_figure\n\n"
-            f"matrix_figure({self.shared.beams_code}.migration)"
+    def _paint_closure(self) -> None:
+        """Correct one half of the events with the other, and draw the residuals."""
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", NotClosingWarning)  # the text says it
+            result = closure_of(
+                self.live.table,
+                self.live.plan,
+                UnfoldingOptions(method=self.method.value),
+                beams=self.shared.beams.value,
+            )
+        caption = self.shared.caption
+        self.picture.draw(
+            CLOSURE,
+            lambda figure: figures.closure_figure(
+                result, caption=caption, figure=figure
+            ),
         )
+        self._say(
+            f"probability of a larger χ² if the correction is right on average: "
+            f"{result.probability:.2g}"
+        )
+
+    def _say(self, text: str) -> None:
+        self.numbers.value = f'<div class="toprecon-status">{text}</div>'
 
     def _rebin(self, n: int) -> None:
         if self._quiet:
