@@ -77,3 +77,42 @@ def test_the_left_handed_beam_suffers_far_more(event_data):
     right = study(event_data, "RL", both_tops=True).asymmetry.shift
     difference = right.value - left.value
     assert difference > 3 * (left.error**2 + right.error**2) ** 0.5
+
+
+@pytest.mark.parametrize("helicity", ["LR", "RL"])
+def test_all_hadronic_events_lose_most_to_the_charge(event_data, helicity):
+    plan = StudyPlan().with_settings({"study.channel": "all-hadronic"})
+    path = event_data / "showered" / f"hadronic_500_{helicity}.root"
+    result = run_study(path, plan, layout=LAYOUT).asymmetry
+    budget = result.budget
+    assert abs(budget.closure) < 1e-12
+    charge = budget["charge"].shift
+    assert charge.value < -5 * charge.error
+    others = [s.shift.value for s in budget.steps if s.name != "charge"]
+    assert charge.value < min(others)
+    # a wrong charge flips whatever the angle: A_FB shrinks by 1 - 2 w, w the flips
+    shrunk = result.reconstructed.value / result.chosen.value
+    assert 0.4 < shrunk < 0.8
+
+
+def test_in_hadronic_pairs_the_other_helicity_suffers_from_the_pairing(event_data):
+    """The sign comes from the b jets there, so the hard W of e-R e+L leads astray."""
+    plan = StudyPlan().with_settings({"study.channel": "all-hadronic"})
+    shifts = {}
+    for helicity in ("LR", "RL"):
+        path = event_data / "showered" / f"hadronic_500_{helicity}.root"
+        a = run_study(path, plan, layout=LAYOUT).asymmetry
+        names = ("wrong_b", "wrong_w", "unmatched")
+        shifts[helicity] = sum(a.budget[n].shift.value for n in names)
+    # errors of about 0.008 each
+    assert shifts["RL"] < shifts["LR"] - 0.03
+
+
+def test_any_mix_of_showered_beams_closes(event_data):
+    files = [event_data / "showered" / f"lepjets_500_{h}.root" for h in ("LR", "RL")]
+    result = run_study(files, StudyPlan(), layout=LAYOUT)
+    for beams in (result.beams, *result.by_helicity.values()):
+        a = beams.asymmetry
+        assert abs(a.budget.closure) < 1e-12
+        found = a.flips.slope.value * a.generated_selected.value + a.flips.offset.value
+        assert found == pytest.approx(a.reconstructed_signal.value, abs=1e-12)

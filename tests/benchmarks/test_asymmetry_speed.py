@@ -8,7 +8,15 @@ import numpy as np
 import pytest
 
 from tests.toys import selected, toy_table
-from toprecon.asymmetry import ScanAxis, ScanResult, accumulate, accumulate_scan
+from toprecon.asymmetry import (
+    Rows,
+    ScanAxis,
+    ScanResult,
+    accumulate,
+    accumulate_scan,
+    compare,
+)
+from toprecon.migration import MigrationOptions, accumulate_halves, check_closure
 
 N = 1_000_000
 
@@ -51,3 +59,23 @@ def test_a_scan_of_2500_points_costs_a_few_studies(table, record_property):
     # 2500 studies one by one would be 2500; cumulative sums make it a few dozen
     assert one_scan < 60 * one_study
     assert np.isfinite(one_scan)
+
+
+@pytest.mark.benchmark
+def test_a_comparison_and_a_closure_cost_a_few_studies(table, record_property):
+    mask, weight = selected(table), table["weight"]
+    rows = Rows(table, mask, weight)
+    tighter = Rows(table, mask & (table["toy.quality"] < 5), weight)
+    options = MigrationOptions()
+    times = {
+        "study": seconds(lambda: accumulate(table, mask, weight).result().budget),
+        "comparison": seconds(lambda: compare(rows, tighter)),
+        "halves": seconds(lambda: accumulate_halves(table, mask, weight, options)),
+    }
+    halves = accumulate_halves(table, mask, weight, options)
+    times["closure"] = seconds(lambda: check_closure(*halves))
+    for name, value in times.items():
+        record_property(f"{name}_seconds", value)
+    print("\n" + ", ".join(f"{n} {t:.3f} s" for n, t in times.items()))
+    assert times["comparison"] < 20 * times["study"]
+    assert times["halves"] < 10 * times["study"]
