@@ -138,11 +138,12 @@ def compare(first: Rows, second: Rows) -> Comparison:
         If an identity occurs twice in a table, or the tables share none.
     """
     for place, rows in (("first", first), ("second", second)):
-        n_unique = len(np.unique(rows.table["id"]))
-        if n_unique < len(rows.table):
+        ordered = np.sort(rows.table["id"])  # faster than counting unique values
+        repeated = int((ordered[1:] == ordered[:-1]).sum())
+        if repeated:
             msg = (
                 f"comparison: every event may occur once, but the {place} table has "
-                f"{len(rows.table) - n_unique} repeated identities"
+                f"{repeated} repeated identities"
             )
             raise StudyError(msg)
     ids, at_first, at_second = np.intersect1d(
