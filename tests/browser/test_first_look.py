@@ -131,6 +131,19 @@ def test_cut_is_added_from_the_list_and_beams_are_chosen(desk, expect):
     photograph(desk, "two cuts")
 
 
+def test_shift_is_explained_and_the_matrix_is_put_to_the_test(desk, expect):
+    desk.get_by_role("button", name="causes of the shift").click()
+    expect(desk.get_by_text("axial, Z")).to_have_count(0)  # beams must be known
+    expect(desk.get_by_text("the mix of beams must be known")).to_be_visible()
+    desk.get_by_label("beams", exact=True).select_option(label="e-L e+R")
+    expect(desk.get_by_text("axial, Z")).to_be_visible()
+    photograph(desk, "view meaning")
+    desk.get_by_role("button", name="Migration", exact=True).click()
+    desk.get_by_role("button", name="closure test").click()
+    expect(desk.get_by_text("probability of a larger")).to_be_visible()
+    photograph(desk, "view closure")
+
+
 def test_plan_is_saved_from_the_desk(desk, expect, served):
     desk.get_by_role("button", name="Hand-off", exact=True).click()
     desk.get_by_role("button", name="save plan").click()

@@ -110,7 +110,10 @@ def _curve(axes: Any, result: ScanResult, label: str, best: ScanPoint | None) ->
     axes.set_ylim(0, 1.35 * highest)
     _label_points(axes.xaxis, points)
     axes.set_xlabel(f"cut on {label}")
-    axes.legend(loc="upper right", frameon=False, fontsize=8.5, labelcolor=style.INK)
+    axes.legend(
+        loc="upper right", framealpha=0.85, edgecolor="none", facecolor=style.PAPER,
+        fontsize=8.5, labelcolor=style.INK,
+    )  # fmt: skip
     style.heading(axes, f"error of {style.A_FB}")
 
 
@@ -144,4 +147,9 @@ def _plane(
 def _label_points(axis: Any, points: tuple[float, ...]) -> None:
     """Label some of the points, which are spread by events and not by value."""
     marked = np.unique(np.linspace(0, len(points) - 1, 5).round().astype(int))
-    axis.set_ticks(marked, [f"{points[k]:.3g}" for k in marked])
+    axis.set_ticks(marked, [_short(points[k]) for k in marked])
+
+
+def _short(value: float) -> str:
+    """Return a number in few characters."""
+    return f"{value:.3g}" if abs(value) < 1000 else f"{value:.0f}"
