@@ -160,3 +160,18 @@ def test_unknown_mixes_and_full_polarisation_are_no_problem(
     full = plan.with_settings({"beams.electron_polarisation": -1.0})
     effect = run_study(priced, full).beams.polarisation
     assert math.isfinite(effect.error("reconstructed"))
+
+
+def test_both_estimators_are_reported_in_the_range_of_the_plan(priced, study_plan):
+    plan = study_plan.with_settings({"asymmetry.largest_cosine": 0.9})
+    result = run_study(priced, plan)
+    found = result.estimators
+    mapping = result_mapping(result)
+    numbers = mapping["beams"]["estimators"]
+    assert numbers["largest_cosine"] == 0.9
+    assert numbers["fit"]["extrapolated"]["value"] == found.fit.extrapolated.value
+    assert numbers["counting"]["in_range"]["value"] == found.counting.in_range.value
+    left = result.by_helicity["LR"].asymmetry.estimators(plan.asymmetry)
+    assert mapping["by_helicity"]["LR"]["estimators"]["correlation"] == left.correlation
+    assert "|cos| < 0.9, extrapolated: counting" in result_text(result)
+    assert type(plan).from_toml(plan.to_toml()) == plan

@@ -48,7 +48,7 @@ class EstimatorOptions(Options):
                 f"must be a multiple of {BINS.widths[0]:g}, where bins end; got {value}"
             )
             raise ValueError(msg)
-        return nearest_edge
+        return value
 
 
 @dataclasses.dataclass(frozen=True)

@@ -21,6 +21,7 @@ from typing import Any, Self
 import tomli_w
 from pydantic import field_validator, model_validator
 
+from toprecon.asymmetry import EstimatorOptions
 from toprecon.boosted import OBSERVABLES as BOOSTED_OBSERVABLES
 from toprecon.boosted import BoostedOptions
 from toprecon.errors import InputError, OptionError, nearest
@@ -160,6 +161,9 @@ class StudyPlan(Options):
     angle: AngleOptions = option(None, "angle measured", factory=AngleOptions)
     beams: BeamsOptions = option(None, "beams and luminosity", factory=BeamsOptions)
     cuts: tuple[CutOptions, ...] = option((), "cuts on the event table, in order")
+    asymmetry: EstimatorOptions = option(
+        None, "estimators of A_FB beside counting everything", factory=EstimatorOptions
+    )
     migration: MigrationOptions = option(
         None, "bins of the migration matrix", factory=MigrationOptions
     )

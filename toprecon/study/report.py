@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 from toprecon.statistics import Measured
 
 if TYPE_CHECKING:
+    from toprecon.asymmetry import EstimatorOptions, EstimatorResult
     from toprecon.study.result import BeamsResult, StudyResult
 
 CLASS_NAMES = {
@@ -51,8 +52,10 @@ def result_mapping(result: StudyResult) -> dict[str, Any]:
         "channel": plan.study.channel.value,
         "plan_hash": plan.hash,
         "cautions": list(result.cautions),
-        "beams": _beams_mapping(result.beams),
-        "by_helicity": {n: _beams_mapping(b) for n, b in result.by_helicity.items()},
+        "beams": _beams_mapping(result.beams, plan.asymmetry),
+        "by_helicity": {
+            n: _beams_mapping(b, plan.asymmetry) for n, b in result.by_helicity.items()
+        },
         "statuses": result.statuses,
         "undefined": result.undefined,
         "samples": [sample.to_mapping() for sample in result.samples],
@@ -84,10 +87,11 @@ def result_text(result: StudyResult) -> str:
                 f"{plan.beams.positron_polarisation:+g}; expected at "
                 f"{plan.beams.luminosity:g} fb^-1"
             )
-        lines += _beams_lines(title, result.beams)
+        lines += _beams_lines(title, result.beams, plan.asymmetry)
     for name, beams in result.by_helicity.items():
         meaning = {"LR": "e-L e+R", "RL": "e-R e+L"}[name]
-        lines += _beams_lines(f"beams {name} ({meaning})", beams)
+        title = f"beams {name} ({meaning})"
+        lines += _beams_lines(title, beams, plan.asymmetry)
     for observable, count in result.undefined.items():
         if count:
             lines.append(f"{count} events fail the cut on an undefined {observable}")
@@ -128,7 +132,25 @@ def _number(value: float) -> float | None:
     return float(value) if math.isfinite(value) else None
 
 
-def _beams_mapping(beams: BeamsResult) -> dict[str, Any]:
+def _estimators_mapping(found: EstimatorResult) -> dict[str, Any]:
+    """Numbers of both estimators."""
+    out: dict[str, Any] = {
+        "spectrum": found.spectrum,
+        "largest_cosine": found.largest_cosine,
+        "correlation": _number(found.correlation),
+        "chi2": _number(found.angular_fit.chi2),
+        "degrees": found.angular_fit.degrees,
+    }
+    for name in ("counting", "fit"):
+        estimator = getattr(found, name)
+        out[name] = {
+            part: getattr(estimator, part).to_mapping()
+            for part in ("in_range", "factor", "extrapolated")
+        }
+    return out
+
+
+def _beams_mapping(beams: BeamsResult, options: EstimatorOptions) -> dict[str, Any]:
     """Numbers of one setting of the beams."""
     a = beams.asymmetry
     flow = beams.cut_flow
@@ -161,6 +183,7 @@ def _beams_mapping(beams: BeamsResult) -> dict[str, Any]:
             if beams.polarisation
             else None
         ),
+        "estimators": _estimators_mapping(a.estimators(options)),
         "efficiency": a.efficiency.to_mapping(),
         "fraction_right": a.fraction_right.to_mapping(),
         "background_share": _number(a.background_share),
@@ -198,7 +221,9 @@ def _beams_mapping(beams: BeamsResult) -> dict[str, Any]:
     }
 
 
-def _beams_lines(title: str, beams: BeamsResult) -> list[str]:
+def _beams_lines(
+    title: str, beams: BeamsResult, options: EstimatorOptions
+) -> list[str]:
     """Lines of one setting of the beams."""
     a = beams.asymmetry
     width = max(len(step) for step in beams.cut_flow.steps)
@@ -229,6 +254,12 @@ def _beams_lines(title: str, beams: BeamsResult) -> list[str]:
     if beams.polarisation is not None:
         error = beams.polarisation.error("reconstructed")
         lines.append(f"  error from the polarisations: {error:.5f}")
+    found = a.estimators(options)
+    lines += _wrapped(
+        f"|cos| < {found.largest_cosine:g}, extrapolated: counting "
+        f"{found.counting.extrapolated}, fit of the angular terms "
+        f"{found.fit.extrapolated}, correlation {found.correlation:.2f}"
+    )
     f = a.flips
     lines += [
         "",

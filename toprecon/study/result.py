@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from toprecon import __version__
-from toprecon.asymmetry import AsymmetryResult, AsymmetrySums
+from toprecon.asymmetry import AsymmetryResult, AsymmetrySums, EstimatorResult
 from toprecon.errors import StudyError
 from toprecon.events import CutFlow, Sample, Status
 from toprecon.io import InputReport
@@ -106,6 +106,11 @@ class StudyResult:
     def asymmetry(self) -> AsymmetryResult:
         """A_FB and its distortion for the beams of the plan."""
         return self.beams.asymmetry
+
+    @property
+    def estimators(self) -> EstimatorResult:
+        """A_FB by counting and by a fit in the range of the plan, its beams."""
+        return self.asymmetry.estimators(self.plan.asymmetry)
 
     @property
     def by_class(self) -> Any:
