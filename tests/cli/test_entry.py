@@ -193,3 +193,9 @@ def test_only_its_own_line_is_on_the_output_of_a_generation(tmp_path):
     )
     assert done.stdout.count("\n") == 1
     assert done.stdout.startswith(str(tmp_path / "out" / "pairs.root"))
+
+
+def test_lab_without_jupyterlab_says_how_to_get_it(tmp_path, monkeypatch, capsys):
+    monkeypatch.setitem(sys.modules, "jupyterlab", None)
+    assert main(["lab", str(tmp_path)]) == 2
+    assert "run pip install -e '.[lab]' in the clone" in capsys.readouterr().err

@@ -88,7 +88,7 @@ def test_missing_package_is_named(monkeypatch):
         shower_module, "_pair_generator", shower_module._pair_generator.__wrapped__
     )
     options = GenerationOptions(simulation="shower")
-    with pytest.raises(MissingPackageError, match=r"pip install 'toprecon\[shower\]'"):
+    with pytest.raises(MissingPackageError, match=r"pip install -e '.\[shower\]'"):
         generate(1, options)
 
 

@@ -148,7 +148,7 @@ def lab(options: argparse.Namespace) -> int:
     except ImportError as error:
         msg = (
             "lab: JupyterLab is required, but not installed; run "
-            "pip install 'toprecon[lab]'"
+            "pip install -e '.[lab]' in the clone"
         )
         raise MissingPackageError(msg) from error
     command = [

@@ -225,7 +225,7 @@ def load_pythia() -> Any:
     except ImportError as error:
         msg = (
             "generate: simulation = 'shower' needs the package pythia8mc, which is not "
-            "installed; install it with pip install 'toprecon[shower]'"
+            "installed; run pip install -e '.[shower]' in the clone"
         )
         raise MissingPackageError(msg) from error
     return pythia8mc
