@@ -144,6 +144,18 @@ def test_shift_is_explained_and_the_matrix_is_put_to_the_test(desk, expect):
     photograph(desk, "view closure")
 
 
+def test_cells_run_twice_leave_one_desk_that_works(notebook, expect):
+    notebook.open(PATH).run_all().run_all()
+    page = notebook.page
+    expect(page.locator(".noUi-handle-upper")).to_have_count(1)
+    page.locator("img.widget-image").first.scroll_into_view_if_needed()
+    before = status_of(page).inner_text()
+    page.locator(".noUi-handle-upper").first.focus()
+    page.keyboard.press("PageDown")
+    expect(status_of(page)).not_to_have_text(before)
+    assert notebook.troubles == []
+
+
 def test_plan_is_saved_from_the_desk(desk, expect, served):
     desk.get_by_role("button", name="Hand-off", exact=True).click()
     desk.get_by_role("button", name="save plan").click()

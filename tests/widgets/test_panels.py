@@ -319,3 +319,36 @@ def test_only_observables_of_the_table_are_offered(desk):
     assert not any(name.startswith(("boosted.", "fit.")) for name in offered)
     desk.live.set_settings({"fit.on": True})
     assert any(name.startswith("fit.") for _, name in desk.cuts.add.options)
+
+
+def test_cell_that_runs_again_closes_what_it_showed_before(events, monkeypatch, capsys):
+    from toprecon.widgets import base
+
+    monkeypatch.setattr(base, "_SHOWN", {})
+    closed = []
+
+    class Shown:
+        widget = "a widget"
+
+        def __init__(self, name):
+            self.name = name
+
+        def close(self):
+            closed.append(self.name)
+
+    here = ["cell 1", "run 1"]
+    monkeypatch.setattr(base, "_present_cell", lambda: tuple(here))
+    first, second, third = Shown("first"), Shown("second"), Shown("third")
+    base.show_in_cell(first)
+    base.show_in_cell(second)  # two in one cell stay both
+    assert closed == []
+    here[:] = ["cell 2", "run 2"]
+    base.show_in_cell(third)
+    assert closed == []
+    here[:] = ["cell 1", "run 3"]
+    base.show_in_cell(second)  # shown again: stays
+    assert closed == ["first"]
+    here[:] = ["", ""]  # not in a notebook
+    base.show_in_cell(third)
+    assert closed == ["first"]
+    assert "a widget" in capsys.readouterr().out

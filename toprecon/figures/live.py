@@ -74,7 +74,11 @@ class LiveFigure:
         from PIL import Image
 
         self._draw()
-        picture = Image.fromarray(self.pixels()[:, :, :3])
+        size = self._canvas.get_width_height()
+        raw = self._canvas.buffer_rgba()
+        picture = Image.frombuffer("RGBA", size, raw, "raw", "RGBA", 0, 1).convert(
+            "RGB"
+        )
         stream = io.BytesIO()
         picture.save(stream, format="png", compress_level=1)
         return stream.getvalue()

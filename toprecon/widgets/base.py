@@ -370,9 +370,45 @@ class Panel:
         close_all(self.widget)
 
     def _ipython_display_(self) -> None:
-        from IPython.display import display
+        show_in_cell(self)
 
-        display(self.widget)
+
+_SHOWN: dict[str, tuple[str, list[Any]]] = {}
+"""By cell of a notebook: the execution, and what it has shown."""
+
+
+def show_in_cell(shown: Any) -> None:
+    """Display a desk or a panel; close those an earlier run of the cell has left.
+
+    Parameters
+    ----------
+    shown : Desk or Panel
+        Has ``widget`` and ``close``.
+    """
+    from IPython.display import display
+
+    cell, execution = _present_cell()
+    if cell:
+        earlier, others = _SHOWN.get(cell, ("", []))
+        if earlier != execution:
+            for other in others:
+                if other is not shown:
+                    other.close()
+            others = []
+        _SHOWN[cell] = (execution, [*others, shown])
+    display(shown.widget)
+
+
+def _present_cell() -> tuple[str, str]:
+    """Return the identities of the cell and of its execution; empty outside."""
+    from IPython import get_ipython
+
+    shell = get_ipython()
+    if shell is None or not hasattr(shell, "get_parent"):
+        return "", ""
+    parent = shell.get_parent() or {}
+    cell = parent.get("metadata", {}).get("cellId", "")
+    return str(cell), str(parent.get("header", {}).get("msg_id", ""))
 
 
 def labelled(text: str) -> Any:

@@ -8,7 +8,7 @@ import ipywidgets
 
 from toprecon.study import EventTable, LiveStudy, StudyPlan, StudyResult
 from toprecon.widgets.angle import AnglePanel
-from toprecon.widgets.base import ErrorLine, Panel, Shared, close_all
+from toprecon.widgets.base import ErrorLine, Panel, Shared, close_all, show_in_cell
 from toprecon.widgets.boosted import BoostedPanel
 from toprecon.widgets.comparing import ComparePanel
 from toprecon.widgets.cuts import CutsPanel
@@ -143,6 +143,4 @@ class Desk:
             self.shared.refresh()
 
     def _ipython_display_(self) -> None:
-        from IPython.display import display
-
-        display(self.widget)
+        show_in_cell(self)
