@@ -9,11 +9,15 @@ from typing import Any
 import numpy as np
 from matplotlib.figure import Figure
 from matplotlib.patches import Patch
+from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from toprecon.events import Binning, CutFlow, Observable
 from toprecon.figures import style
 from toprecon.figures.live import LiveFigure, top_of_axis
+
+STRIP = (0.012, 0.24, 0.966, 0.74)
+"""Place of the axes of a strip: its ends lie over those of the slider beneath."""
 
 Classes = Mapping[str, NDArray[np.float64]]
 
@@ -47,7 +51,7 @@ class CutFigure(LiveFigure):
         super().__init__(size)
         self._binning = binning
         self._with_axes = with_axes
-        place = (0.11, 0.2, 0.64, 0.7) if with_axes else (0.024, 0.24, 0.952, 0.74)
+        place = (0.11, 0.2, 0.64, 0.7) if with_axes else STRIP
         self._axes = axes = self.figure.add_axes(place)
         edges = binning.array
         self._parts: dict[str, Any] = {}
@@ -76,6 +80,7 @@ class CutFigure(LiveFigure):
             axes.set_yticks([])
             axes.spines["left"].set_visible(False)
             axes.tick_params(labelsize=8, length=2, pad=2)
+            self._keep_labels_inside()
 
     def update(
         self, classes: Classes, *, low: float | None = None, high: float | None = None
@@ -98,9 +103,11 @@ class CutFigure(LiveFigure):
                 base = top
         self._outline.set_data(base)
         axes, highest = self._axes, float(base.max(initial=0))
-        axes.set_ylim(0, top_of_axis(highest, axes.get_ylim()[1]))
         if self._with_axes:
+            axes.set_ylim(0, top_of_axis(highest, axes.get_ylim()[1]))
             self._legend()
+        else:
+            axes.set_ylim(0, max(1.05 * highest, 1e-9))
         self.move(low, high)
 
     def move(self, low: float | None, high: float | None) -> None:
@@ -118,6 +125,18 @@ class CutFigure(LiveFigure):
         ):
             line.set_xdata([value, value])
             line.set_visible(value != end)
+
+    def _keep_labels_inside(self) -> None:
+        """Let the labels at the ends of the axis grow inwards."""
+        ends = self._binning.edges[0], self._binning.edges[-1]
+        ticks = np.asarray(MaxNLocator(6).tick_values(*ends))
+        ticks = ticks[(ticks >= ends[0]) & (ticks <= ends[1])]
+        self._axes.set_xticks(ticks)
+        labels = self._axes.get_xticklabels()
+        for tick, label in zip(ticks, labels, strict=True):
+            label.set_horizontalalignment(
+                "left" if tick == ends[0] else "right" if tick == ends[1] else "center"
+            )
 
     def _legend(self) -> None:
         """Name the classes that are there."""
