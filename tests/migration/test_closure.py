@@ -140,3 +140,14 @@ def test_impossible_requests_are_explained():
     nothing = EventTable(columns, table.samples, table.stages)
     with pytest.raises(StudyError, match="selected events in every generated bin"):
         check_closure(*halves(nothing))
+
+
+def test_what_is_left_without_half_a_is_half_b():
+    table = toy_table(3000, seed=5, weights=exponential, **CAUSES)
+    a, b = halves(table)
+    whole = accumulate(table, selected(table), table["weight"], FOUR)
+    left = whole.without(a)
+    for name, array in b.arrays.items():
+        assert left.arrays[name] == pytest.approx(array, rel=1e-9), name
+        assert np.array_equal(left.arrays[name] == 0, array == 0), name
+    assert np.array_equal(table.in_half_a, in_half_a(table["id"]))

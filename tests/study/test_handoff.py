@@ -14,6 +14,7 @@ from toprecon.errors import InputError, StudyError
 from toprecon.study import (
     CAUTIONS,
     StudyPlan,
+    UnfoldingOptions,
     handoff,
     read_hand_off,
     result_text,
@@ -22,6 +23,7 @@ from toprecon.study import (
 
 FILES = {
     "README.txt",
+    "closure.json",
     "hepdata",
     "migration.json",
     "migration.npz",
@@ -209,3 +211,27 @@ def test_the_result_in_words_names_every_cause(result):
         assert words in text
     assert max(len(line) for line in text.splitlines()) <= 92
     assert "Prüfung" in text
+
+
+def test_the_folder_says_how_well_every_method_closes(result, tmp_path):
+    folder = result.hand_off(tmp_path / "out")
+    closures = json.loads((folder / "closure.json").read_text(encoding="utf-8"))
+    assert set(closures) == {"plan", *result.by_helicity}
+    for name, methods in closures.items():
+        beams = result.beams if name == "plan" else result.by_helicity[name]
+        assert set(methods) == {"inversion", "tikhonov", "bayes"}
+        found = beams.closure(UnfoldingOptions(method="bayes"))
+        assert methods["bayes"]["residual"] == found.residual.tolist()
+        assert methods["bayes"]["afb_residual"] == found.asymmetry_residual.to_mapping()
+        half_b = beams.migration.without(beams.half_a)
+        assert methods["bayes"]["generated"] == half_b.generated.tolist()
+
+
+def test_a_closure_that_cannot_be_made_says_why(study_files, study_plan, tmp_path):
+    plan = study_plan.with_settings({"migration.edges": [-1.0, -0.9999999, 0.0, 1.0]})
+    folder = run_study(study_files, plan).hand_off(tmp_path / "out")
+    closures = json.loads((folder / "closure.json").read_text(encoding="utf-8"))
+    assert (
+        "selected events in every generated bin"
+        in (closures["plan"]["inversion"]["missing"])
+    )

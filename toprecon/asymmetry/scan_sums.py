@@ -19,7 +19,6 @@ from pydantic import field_validator
 from toprecon.errors import OptionError, StudyError
 from toprecon.events import EventTable
 from toprecon.options import Options, option
-from toprecon.resampling import in_half_a
 
 FloatArray = NDArray[np.float64]
 
@@ -215,7 +214,7 @@ def accumulate_scan(
         raise StudyError(msg)
     weight = np.asarray(weight, dtype=np.float64)
     is_signal = table["is_signal"]
-    half = np.where(in_half_a(table["id"]), 0, 1)
+    half = np.where(table.in_half_a, 0, 1)
     true = table["cos_theta_true"] >= 0
     signal = np.flatnonzero(is_signal)
     hemisphere = (2 * half + true)[signal]

@@ -22,6 +22,7 @@ from toprecon.errors import InputError, MissingFieldError, nearest
 from toprecon.events.binning import Binning
 from toprecon.events.cutflow import CutFlow
 from toprecon.events.samples import Sample
+from toprecon.resampling import in_half_a
 
 COLUMNS = {
     "id": np.uint64,
@@ -141,6 +142,11 @@ class EventTable:
     @cached_property
     def _bins(self) -> dict[tuple[str, Binning], NDArray[np.int16]]:
         return {}
+
+    @cached_property
+    def in_half_a(self) -> NDArray[np.bool_]:
+        """Which rows belong to half A by their identity, shape (E,)."""
+        return in_half_a(self["id"])
 
     @cached_property
     def by_sample(self) -> tuple[tuple[NDArray[np.intp], Self], ...]:

@@ -16,7 +16,7 @@ from toprecon.migration.hepdata import write_hepdata
 from toprecon.migration.histogram_json import read_histogram_json, write_histogram_json
 from toprecon.migration.influence import simulation_covariance
 from toprecon.migration.linearity import LinearityResult, check_linearity
-from toprecon.migration.matrix import MigrationMatrix, accumulate
+from toprecon.migration.matrix import MigrationMatrix, accumulate, accumulate_half
 from toprecon.migration.npz import read_npz, write_npz
 from toprecon.migration.options import MigrationOptions
 from toprecon.migration.root import read_root, write_root
@@ -31,6 +31,7 @@ __all__ = [
     "Unfolded",
     "UnfoldingOptions",
     "accumulate",
+    "accumulate_half",
     "accumulate_halves",
     "check_closure",
     "check_linearity",

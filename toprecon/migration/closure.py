@@ -23,10 +23,9 @@ from toprecon.migration.influence import (
     response_derivatives,
     unfold_block,
 )
-from toprecon.migration.matrix import MigrationMatrix, accumulate
+from toprecon.migration.matrix import MigrationMatrix, accumulate_half
 from toprecon.migration.options import MigrationOptions
 from toprecon.migration.unfolding import Unfolded, UnfoldingOptions
-from toprecon.resampling import in_half_a
 from toprecon.statistics import Measured, asymmetry_of_spectrum
 
 FloatArray = NDArray[np.float64]
@@ -118,11 +117,11 @@ def accumulate_halves(
     tuple of MigrationMatrix
         Each can be added to that of other rows.
     """
-    half = in_half_a(table["id"])
+    half = table.in_half_a
     weight = np.asarray(weight, dtype=np.float64)
     return (
-        accumulate(table, selected, np.where(half, weight, 0.0), options),
-        accumulate(table, selected, np.where(half, 0.0, weight), options),
+        accumulate_half(table, selected, weight, half, options),
+        accumulate_half(table, selected, weight, ~half, options),
     )
 
 

@@ -20,7 +20,6 @@ from toprecon.migration.influence import (
 from toprecon.migration.matrix import cells_of
 from toprecon.migration.options import MigrationOptions
 from toprecon.migration.unfolding import UnfoldingOptions
-from toprecon.resampling import in_half_a
 from toprecon.statistics import Measured, asymmetry_of_spectrum
 
 FloatArray = NDArray[np.float64]
@@ -123,7 +122,7 @@ def check_linearity(
     response, nominal = accumulate_halves(table, selected, weight, options)
     block, variances = nominal.blocks()
     _, fixed = unfold_block(response, block, variances, unfolding)
-    half_b = ~in_half_a(table["id"])
+    half_b = ~table.in_half_a
     cell, shape = cells_of(table.take(half_b), selected[half_b], options)
     process = table.is_signal_process[half_b]
     factors = {n: _ratio(n, x, table, half_b, process) for n, x in ratios.items()}

@@ -160,6 +160,26 @@ class MigrationMatrix:
         }
         return dataclasses.replace(self, **added)
 
+    def without(self, part: Self) -> Self:
+        """Return what is left without a part of the events, such as half A.
+
+        Parameters
+        ----------
+        part : MigrationMatrix
+            Filled from a part of the rows, with the same weights.
+
+        Returns
+        -------
+        MigrationMatrix
+            Without replicas; what only rounding leaves is 0.
+        """
+        blocks = []
+        for mine, theirs in zip(self.blocks(), part.blocks(), strict=True):
+            left = mine - theirs
+            left[np.abs(left) <= 1e-12 * np.abs(mine)] = 0.0
+            blocks.append(left)
+        return type(self).from_blocks(self.true_binning, self.reco_binning, *blocks)
+
     def scaled(self, factor: float) -> Self:
         """Return the matrix with every weight multiplied by a factor."""
         powers = {name: 2 if name.endswith("_variances") else 1 for name in self.arrays}
@@ -371,6 +391,46 @@ def accumulate(
         fill(weight),
         fill(weight**2),
         replicas,
+    )
+
+
+def accumulate_half(
+    table: EventTable,
+    selected: NDArray[np.bool_],
+    weight: FloatArray,
+    half: NDArray[np.bool_],
+    options: MigrationOptions | None = None,
+) -> MigrationMatrix:
+    """Fill the matrix from some rows only, without replicas.
+
+    Parameters
+    ----------
+    table : EventTable
+        Rows.
+    selected : array of bool, shape (E,)
+        Rows that pass selection, reconstruction and cuts.
+    weight : array, shape (E,)
+        Weights.
+    half : array of bool, shape (E,)
+        Rows that enter.
+    options : MigrationOptions, optional
+        Bins.
+
+    Returns
+    -------
+    MigrationMatrix
+        Of these rows.
+    """
+    options = options or MigrationOptions()
+    cell, shape = cells_of(table, selected, options)
+    cell, w = cell[half], weight[half]
+    size = shape[0] * shape[1]
+    blocks = [
+        np.bincount(cell, values, minlength=size).astype(np.float64).reshape(shape)
+        for values in (w, w**2)
+    ]
+    return MigrationMatrix.from_blocks(
+        options.true_binning, options.reco_binning, *blocks
     )
 
 

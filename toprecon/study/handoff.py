@@ -9,6 +9,7 @@
     plan.toml           every setting
     provenance.json     version, hashes, inputs, samples, factors, cautions
     result.json         the numbers of the study
+    closure.json        half B corrected with the response of half A, three methods
     README.txt          what is what, conventions, cautions
 """
 
@@ -18,12 +19,15 @@ import dataclasses
 import json
 import os
 import shutil
+import warnings
 from pathlib import Path
 from typing import Any
 
-from toprecon.errors import InputError, StudyError
+from toprecon.errors import InputError, NotClosingWarning, StudyError
 from toprecon.migration import (
+    Method,
     MigrationMatrix,
+    UnfoldingOptions,
     read_npz,
     write_hepdata,
     write_histogram_json,
@@ -32,7 +36,7 @@ from toprecon.migration import (
 )
 from toprecon.study.plan import StudyPlan
 from toprecon.study.report import result_mapping
-from toprecon.study.result import StudyResult, provenance_of
+from toprecon.study.result import BeamsResult, StudyResult, provenance_of
 
 _MARKER = "provenance.json"
 
@@ -180,7 +184,41 @@ def _write_all(result: StudyResult, folder: Path) -> None:
     provenance = {**provenance_of(result), "by_helicity": list(result.by_helicity)}
     _write_json(folder / _MARKER, provenance)
     _write_json(folder / "result.json", result_mapping(result))
+    _write_json(folder / "closure.json", _closures(result))
     (folder / "README.txt").write_text(_readme(result), encoding="utf-8")
+
+
+def _closures(result: StudyResult) -> dict[str, Any]:
+    """Closure of every setting of the beams with every method, or why there is none."""
+    beams = {"plan": result.beams, **result.by_helicity}
+    return {
+        name: {method.value: _closure(item, method) for method in Method}
+        for name, item in beams.items()
+    }
+
+
+def _closure(beams: BeamsResult, method: Method) -> dict[str, Any]:
+    """Residuals of one closure; the file says how probable they are."""
+    try:
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", NotClosingWarning)
+            found = beams.closure(UnfoldingOptions(method=method))
+    except StudyError as error:
+        return {"missing": str(error)}
+    return {
+        "true_edges": list(found.unfolded.binning.edges),
+        "strength": found.unfolded.strength,
+        "generated": found.generated.tolist(),
+        "corrected": found.unfolded.values.tolist(),
+        "residual": found.residual.tolist(),
+        "residual_covariance": found.covariance.tolist(),
+        "chi2": found.chi2,
+        "degrees": found.degrees,
+        "probability": found.probability,
+        "afb_generated": found.asymmetry_generated.to_mapping(),
+        "afb_corrected": found.asymmetry_corrected.to_mapping(),
+        "afb_residual": found.asymmetry_residual.to_mapping(),
+    }
 
 
 def _write_json(path: Path, data: dict[str, Any]) -> None:
@@ -216,6 +254,8 @@ background[reco]    other processes, selected
 
 migration.root / .npz / .json hold the same arrays; migration_LR and migration_RL are
 for pure beams. hepdata/ is ready for a submission. plan.toml repeats the study.
+closure.json: half B of the events (by identity) corrected with the response of half A;
+residuals are corrected minus generated of the same half, with paired covariance.
 
 Cautions: {"; ".join(result.cautions)}.
 """

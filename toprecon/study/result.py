@@ -14,7 +14,12 @@ from toprecon.asymmetry import AsymmetryResult, AsymmetrySums, EstimatorResult
 from toprecon.errors import StudyError
 from toprecon.events import CutFlow, Sample, Status
 from toprecon.io import InputReport
-from toprecon.migration import MigrationMatrix
+from toprecon.migration import (
+    ClosureResult,
+    MigrationMatrix,
+    UnfoldingOptions,
+    check_closure,
+)
 from toprecon.study.plan import StudyPlan
 from toprecon.study.polarisation import PolarisationEffect, polarisation_effect
 from toprecon.study.sums import SampleSums, StudySums
@@ -44,6 +49,8 @@ class BeamsResult:
         A_FB and its distortion.
     migration : MigrationMatrix
         Generated against reconstructed angle.
+    half_a : MigrationMatrix
+        The same of half A of the events.
     polarisation : PolarisationEffect or None
         What the errors of the polarisations do; None if the plan states none, or if
         the mix of beams is not known.
@@ -55,7 +62,23 @@ class BeamsResult:
     signal_cut_flow: CutFlow
     asymmetry: AsymmetryResult
     migration: MigrationMatrix
+    half_a: MigrationMatrix
     polarisation: PolarisationEffect | None = None
+
+    def closure(self, options: UnfoldingOptions | None = None) -> ClosureResult:
+        """Correct half B with the response of half A.
+
+        Parameters
+        ----------
+        options : UnfoldingOptions, optional
+            Method; inversion if absent.
+
+        Returns
+        -------
+        ClosureResult
+            Residuals with paired errors.
+        """
+        return check_closure(self.half_a, self.migration.without(self.half_a), options)
 
     @property
     def is_expected(self) -> bool:
@@ -231,17 +254,25 @@ def _combine(name: str, parts: list[SampleSums], factors: SampleFactors) -> Beam
     first, factor = scaled[0]
     asymmetry: AsymmetrySums = first.asymmetry.scaled(factor)
     migration = first.migration.scaled(factor)
+    half_a = first.half_a.scaled(factor)
     cut_flow = first.cut_flow.scaled(factor)
     for part, factor in scaled[1:]:
         asymmetry = asymmetry + part.asymmetry.scaled(factor)
         migration = migration + part.migration.scaled(factor)
+        half_a = half_a + part.half_a.scaled(factor)
         cut_flow = cut_flow + part.cut_flow.scaled(factor)
     signal = [item for item in scaled if item[0].sample.is_signal_process] or scaled
     signal_cut_flow = signal[0][0].cut_flow.scaled(signal[0][1])
     for part, factor in signal[1:]:
         signal_cut_flow = signal_cut_flow + part.cut_flow.scaled(factor)
     return BeamsResult(
-        name, factors, cut_flow, signal_cut_flow, asymmetry.result(), migration
+        name,
+        factors,
+        cut_flow,
+        signal_cut_flow,
+        asymmetry.result(),
+        migration,
+        half_a,
     )
 
 

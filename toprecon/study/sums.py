@@ -19,7 +19,7 @@ from toprecon.asymmetry import accumulate as accumulate_asymmetry
 from toprecon.errors import StudyError
 from toprecon.events import CutFlow, EventTable, Sample, Status
 from toprecon.io import ChunkRef
-from toprecon.migration import MigrationMatrix
+from toprecon.migration import MigrationMatrix, accumulate_half
 from toprecon.migration import accumulate as accumulate_migration
 from toprecon.study.cutting import apply_cuts
 from toprecon.study.plan import StudyPlan
@@ -39,6 +39,8 @@ class SampleSums:
         State of the asymmetry and its distortion.
     migration : MigrationMatrix
         Matrix with everything beside it.
+    half_a : MigrationMatrix
+        The same of half A of the events, for the closure.
     statuses : array of int, shape (S,)
         Rows by :class:`~toprecon.events.Status`, of those that pass the selection.
     undefined : dict of int
@@ -49,6 +51,7 @@ class SampleSums:
     cut_flow: CutFlow
     asymmetry: AsymmetrySums
     migration: MigrationMatrix
+    half_a: MigrationMatrix
     statuses: NDArray[np.int64]
     undefined: dict[str, int]
 
@@ -60,6 +63,7 @@ class SampleSums:
             cut_flow=self.cut_flow + other.cut_flow,
             asymmetry=self.asymmetry + other.asymmetry,
             migration=self.migration + other.migration,
+            half_a=self.half_a + other.half_a,
             statuses=self.statuses + other.statuses,
             undefined={
                 name: self.undefined.get(name, 0) + other.undefined.get(name, 0)
@@ -127,6 +131,9 @@ def summarise(table: EventTable, plan: StudyPlan) -> StudySums:
             cut_flow=CutFlow.from_stage(stage, weight, cutting.steps),
             asymmetry=accumulate_asymmetry(part, selected, weight),
             migration=accumulate_migration(part, selected, weight, plan.migration),
+            half_a=accumulate_half(
+                part, selected, weight, part.in_half_a, plan.migration
+            ),
             statuses=np.bincount(part["status"][passed], minlength=len(Status)),
             undefined=_undefined(table, rows, stage, plan),
         )
