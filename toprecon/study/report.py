@@ -275,7 +275,7 @@ def _beams_lines(
         for name, c in a.by_class.items()
     ]
     budget = ", ".join(
-        f"{STEP_NAMES[s.name]} {s.shift.value:+.4f}"
+        f"{STEP_NAMES[s.name]} {_signed(s.shift)}"
         for s in a.budget.steps
         if s.shift.value
     )
