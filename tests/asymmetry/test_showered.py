@@ -14,7 +14,14 @@ from pathlib import Path
 
 import pytest
 
-from toprecon.study import StudyPlan, run_study
+from toprecon.study import (
+    EventTable,
+    StudyPlan,
+    helicity_summary,
+    open_events,
+    run_study,
+)
+from toprecon.study.chunks import reconstruct_source
 
 LAYOUT = Path(__file__).parents[1] / "io" / "layouts" / "showered.toml"
 
@@ -116,3 +123,36 @@ def test_any_mix_of_showered_beams_closes(event_data):
         assert abs(a.budget.closure) < 1e-12
         found = a.flips.slope.value * a.generated_selected.value + a.flips.offset.value
         assert found == pytest.approx(a.reconstructed_signal.value, abs=1e-12)
+
+
+def test_expected_errors_are_of_the_published_size(event_data):
+    """Cross sections to 0.47 % and 0.63 % with 250 fb^-1 for each setting of the beams.
+
+    M. S. Amjad et al., arXiv:1307.8102: full simulation of lepton+jets at 500 GeV with
+    beams of -0.8, +0.3 and +0.8, -0.3 (numbers from memory).
+    """
+    plan = StudyPlan().with_settings(
+        {
+            "beams.luminosity": 500.0,
+            "beams.electron_polarisation": -0.8,
+            "beams.positron_polarisation": 0.3,
+        }
+    )
+    files = [event_data / "showered" / f"lepjets_500_{h}.root" for h in ("LR", "RL")]
+    table = reconstruct_source(open_events(files, layout=LAYOUT), plan)
+    share = 2 * 0.217 * 0.674  # one W to e or mu, the other to hadrons (RPP)
+    samples = tuple(
+        s.replace(cross_section_lr=1564 * share, cross_section_rl=724 * share)
+        for s in table.samples
+    )
+    result = run_study(
+        EventTable(table.columns, samples, table.stages, table.provenance), plan
+    )
+    found = helicity_summary(result)
+    for name, published in (("sigma_L", 0.0047), ("sigma_R", 0.0063)):
+        relative = found[name].error / found[name].value
+        # another selection (taus, looser cuts) and no background here
+        assert relative == pytest.approx(published, rel=0.2)
+    # A_FB: published 1.8 % and 1.3 % after cuts on the reconstruction
+    for name in ("A_L", "A_R"):
+        assert 0.010 < found[name].error / found[name].value < 0.022

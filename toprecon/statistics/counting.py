@@ -35,7 +35,7 @@ def asymmetry_from_counts(
     if total == 0:
         return Measured(float("nan"), float("nan"))
     variance = 4 * (backward**2 * s_f + forward**2 * s_b) / total**4
-    return Measured((forward - backward) / total, float(np.sqrt(variance)))
+    return Measured(float((forward - backward) / total), float(np.sqrt(variance)))
 
 
 def fraction_from_counts(
