@@ -163,6 +163,16 @@ def test_closure_test_says_how_well_it_closes(desk):
     assert len(seen) == 3
 
 
+def test_both_estimators_are_said(desk):
+    found = desk.result.asymmetry.estimators(desk.plan.asymmetry)
+    words = desk.panel.meaning.value
+    for estimator in (found.counting, found.fit):
+        assert str(estimator.extrapolated).replace("+-", "±") in words
+    assert "expected data" not in words
+    desk.cuts.rows["pairing.chi2"].high.value = 0.05  # hardly any event is left
+    assert desk.errors.text == ""
+
+
 def test_meaning_of_the_shift_is_said_in_couplings(desk):
     desk.panel.view.value = "causes of the shift"
     assert "It would be mistaken for a change" in desk.panel.meaning.value

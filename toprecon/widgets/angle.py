@@ -63,9 +63,11 @@ class AnglePanel(Panel):
         result, caption = self.shared.result, self.shared.caption
         view = self.view.value
         self._extras.layout.display = None if view == SPECTRUM else "none"
-        self.meaning.layout.display = None if view == CAUSES else "none"
+        self.meaning.layout.display = "none" if view == FLIPS else None
         if view == SPECTRUM:
             self._paint_spectrum()
+            if self.live.is_settled:
+                self.meaning.value = self._estimators()
         elif view == CAUSES:
             self.picture.draw(
                 view,
@@ -95,6 +97,24 @@ class AnglePanel(Panel):
         return (
             f"from toprecon.figures import {name}\n\n{call}\n"
             f"{beams}.asymmetry.reconstructed, {beams}.asymmetry.shift"
+        )
+
+    def _estimators(self) -> str:
+        """Return A_FB as a measurement would quote it, in HTML."""
+        result, options = self.shared.result, self.live.plan.asymmetry
+        found = result.asymmetry.estimators(options)
+        error = result.asymmetry.expected_error
+        expected = (
+            f" In the expected data the error of A_FB is {error:.2g}."
+            if result.is_expected
+            else ""
+        )
+        return (
+            f'<p class="toprecon-status">Reconstructed within |cos θ| ≤ '
+            f"{found.largest_cosine:g}, extrapolated with the generated shape: counting "
+            f"{_text(found.counting.extrapolated)}, fit of the angular terms "
+            f"{_text(found.fit.extrapolated)} (correlation {found.correlation:.2f})."
+            f"{expected}</p>"
         )
 
     def _meaning(self) -> str:

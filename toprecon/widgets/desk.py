@@ -76,7 +76,7 @@ class Desk:
             )
             self.view.observe(lambda _: self._choose(), names="value")
             self._right = ipywidgets.VBox(
-                layout=ipywidgets.Layout(width="760px", flex="0 1 auto")
+                layout=ipywidgets.Layout(width="auto", max_width="100%")
             )
             self.cuts.widget.layout.margin = "0 18px 0 0"
             self.widget = ipywidgets.VBox(
@@ -85,7 +85,12 @@ class Desk:
                     ipywidgets.HBox(
                         [
                             self.cuts.widget,
-                            ipywidgets.VBox([self.view, self._right]),
+                            ipywidgets.VBox(
+                                [self.view, self._right],
+                                layout=ipywidgets.Layout(
+                                    flex="1 1 520px", max_width="760px", min_width="0"
+                                ),
+                            ),
                         ],
                         layout=ipywidgets.Layout(flex_flow="row wrap"),
                     ),
