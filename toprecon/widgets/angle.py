@@ -11,7 +11,8 @@ import ipywidgets
 from toprecon import figures
 from toprecon.errors import StudyError
 from toprecon.study import bias_meaning
-from toprecon.widgets.base import Panel, Picture
+from toprecon.widgets.base import Panel
+from toprecon.widgets.parts import Picture
 
 SPECTRUM, CAUSES, FLIPS = "spectrum", "causes of the shift", "wrong hemisphere"
 

@@ -8,8 +8,9 @@ import ipywidgets
 
 from toprecon import figures
 from toprecon.study import OBSERVABLES, Binning, BranchChoice
-from toprecon.widgets.base import Panel, Picture, helping, labelled
+from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import OptionControls
+from toprecon.widgets.parts import Picture, helping, labelled
 
 BINS = 60
 OWN = [item for item in OBSERVABLES if item.name.startswith("boosted.")]

@@ -9,7 +9,8 @@ import ipywidgets
 
 from toprecon import figures
 from toprecon.study import EventTable, StudyPlan, compare_plans
-from toprecon.widgets.base import Panel, Picture, helping
+from toprecon.widgets.base import Panel
+from toprecon.widgets.parts import Picture, helping
 
 
 class ComparePanel(Panel):

@@ -13,7 +13,8 @@ from pydantic.fields import FieldInfo
 
 from toprecon.errors import OptionError
 from toprecon.options import Options
-from toprecon.widgets.base import Panel, helping
+from toprecon.widgets.base import Panel
+from toprecon.widgets.parts import helping
 
 
 class OptionControls:

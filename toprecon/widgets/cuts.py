@@ -9,8 +9,9 @@ import ipywidgets
 
 from toprecon.figures import CutFigure, class_legend, png
 from toprecon.study import Binning, CutOptions
-from toprecon.widgets.base import Panel, Picture, close_all, helping, labelled
+from toprecon.widgets.base import Panel
 from toprecon.widgets.observables import BY_NAME, offer
+from toprecon.widgets.parts import Picture, close_all, helping, labelled
 
 STEPS = 200
 """Steps of a slider over the range of its observable."""

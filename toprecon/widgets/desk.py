@@ -8,7 +8,7 @@ import ipywidgets
 
 from toprecon.study import EventTable, LiveStudy, StudyPlan, StudyResult
 from toprecon.widgets.angle import AnglePanel
-from toprecon.widgets.base import ErrorLine, Panel, Shared, close_all, show_in_cell
+from toprecon.widgets.base import Panel, Shared, show_in_cell
 from toprecon.widgets.boosted import BoostedPanel
 from toprecon.widgets.comparing import ComparePanel
 from toprecon.widgets.cuts import CutsPanel
@@ -17,6 +17,7 @@ from toprecon.widgets.events import EventsPanel
 from toprecon.widgets.handing import HandOffPanel
 from toprecon.widgets.migration import MigrationPanel
 from toprecon.widgets.pairing import PairingPanel
+from toprecon.widgets.parts import ErrorLine, close_all
 from toprecon.widgets.scan import ScanPanel
 
 PANELS: tuple[type[Panel], ...] = (

@@ -9,7 +9,8 @@ import numpy as np
 
 from toprecon import figures
 from toprecon.study import PairingClass
-from toprecon.widgets.base import Panel, Picture
+from toprecon.widgets.base import Panel
+from toprecon.widgets.parts import Picture
 
 KINDS = [
     ("any pairing", ""),

@@ -9,8 +9,9 @@ from typing import Any
 import ipywidgets
 
 from toprecon import figures
-from toprecon.widgets.base import Panel, Picture, helping, labelled
+from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import OptionControls
+from toprecon.widgets.parts import Picture, helping, labelled
 
 
 class EventsPanel(Panel):

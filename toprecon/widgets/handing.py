@@ -7,8 +7,9 @@ from typing import Any
 
 import ipywidgets
 
-from toprecon.widgets.base import Panel, helping, labelled
+from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import OptionControls
+from toprecon.widgets.parts import helping, labelled
 
 
 class HandOffPanel(Panel):

@@ -11,7 +11,8 @@ import numpy as np
 from toprecon import figures
 from toprecon.errors import NotClosingWarning
 from toprecon.study import UnfoldingOptions, closure_of
-from toprecon.widgets.base import Panel, Picture, helping
+from toprecon.widgets.base import Panel
+from toprecon.widgets.parts import Picture, helping
 
 MATRIX, CLOSURE = "matrix", "closure test"
 METHODS = ("inversion", "tikhonov", "bayes")

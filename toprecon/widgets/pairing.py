@@ -8,9 +8,10 @@ import ipywidgets
 
 from toprecon import figures
 from toprecon.study import Binning
-from toprecon.widgets.base import Panel, Picture, helping, labelled
+from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import OptionControls
 from toprecon.widgets.observables import BY_NAME, USUALLY_CUT_FROM_ABOVE, offer
+from toprecon.widgets.parts import Picture, helping, labelled
 from toprecon.widgets.terms import TermControls
 
 CLASSES, DISTRIBUTION, PURITY = "classes", "distribution", "purity against a cut"

@@ -10,8 +10,9 @@ import numpy as np
 
 from toprecon import figures
 from toprecon.study import Keep, ScanAxis, ScanOptions, scan_cuts
-from toprecon.widgets.base import Panel, Picture, helping
+from toprecon.widgets.base import Panel
 from toprecon.widgets.observables import BY_NAME, USUALLY_CUT_FROM_ABOVE, offer
+from toprecon.widgets.parts import Picture, helping
 
 POINTS = 50
 """Cut values along each axis."""

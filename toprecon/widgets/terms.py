@@ -7,8 +7,9 @@ from typing import Any
 
 import ipywidgets
 
-from toprecon.widgets.base import Panel, helping
+from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import number_or_none
+from toprecon.widgets.parts import helping
 
 BOXES = {
     "target": "target",
