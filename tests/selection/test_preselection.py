@@ -162,13 +162,14 @@ def test_the_order_of_jets_does_not_matter(jets, random):
     assert str(first) == str(second)
 
 
+RANDOM = toy(np.random.default_rng(1).uniform(0, 1, (40, 4)).tolist(), [[50]] * 40)
+
+
 @given(st.floats(0, 1), st.floats(0, 1))
 def test_a_tighter_selection_keeps_fewer(low, high):
     loose, tight = sorted((low, high))
-    rng = np.random.default_rng(1)
-    events = toy(rng.uniform(0, 1, (40, 4)).tolist(), [[50]] * 40)
     kept = [
-        select(events, SelectionOptions(btag_high=limit)).passed
+        select(RANDOM, SelectionOptions(btag_high=limit)).passed
         for limit in (loose, tight)
     ]
     assert not np.any(kept[1] & ~kept[0])
