@@ -16,14 +16,14 @@ from toprecon.pairing.fit_options import (
     TopMasses,
 )
 from toprecon.pairing.fit_result import FIT_OBSERVABLES, FitResult
+from toprecon.pairing.names import TermName, TermOptions
 from toprecon.pairing.options import (
     MissingSource,
     NeutrinoMethod,
     NeutrinoOptions,
     PairingOptions,
+    ScoreKind,
     TagUse,
-    TermName,
-    TermOptions,
 )
 
 __all__ = [
@@ -37,6 +37,7 @@ __all__ = [
     "NeutrinoMethod",
     "NeutrinoOptions",
     "PairingOptions",
+    "ScoreKind",
     "TagUse",
     "TermName",
     "TermOptions",

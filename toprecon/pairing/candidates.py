@@ -12,8 +12,9 @@ from toprecon.events import Channel, Observable, Status, momenta, record_of
 from toprecon.kinematics import minkowski
 from toprecon.pairing import legs
 from toprecon.pairing.engine import system_of
+from toprecon.pairing.names import TermName
 from toprecon.pairing.objects import Objects, read_objects
-from toprecon.pairing.options import PairingOptions, TermName
+from toprecon.pairing.options import PairingOptions
 
 FloatArray = NDArray[np.float64]
 

@@ -10,13 +10,9 @@ from toprecon.events import Channel, Status, require_fields
 from toprecon.pairing.candidates import Choice, build, tops_of
 from toprecon.pairing.engine import Group, evaluate
 from toprecon.pairing.hypotheses import hypotheses
+from toprecon.pairing.names import HADRONIC_TERMS, LEPTONIC_TERMS
 from toprecon.pairing.objects import Objects, read_objects
-from toprecon.pairing.options import (
-    HADRONIC_TERMS,
-    LEPTONIC_TERMS,
-    PairingOptions,
-    TagUse,
-)
+from toprecon.pairing.options import PairingOptions, TagUse
 from toprecon.pairing.terms import terms_of
 
 FloatArray = NDArray[np.float64]

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import dataclasses
 from collections.abc import Iterator, Mapping
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,7 +17,7 @@ from numpy.typing import NDArray
 from toprecon.kinematics import minkowski
 from toprecon.pairing import legs
 from toprecon.pairing.hypotheses import Hypotheses
-from toprecon.pairing.options import TermName
+from toprecon.pairing.names import TermName
 from toprecon.pairing.terms import Term
 
 FloatArray = NDArray[np.float64]
@@ -37,6 +38,8 @@ class Group:
         Their momenta [GeV]; not used in the all-hadronic channel.
     b_penalty, w_penalty : array, shape (n, E)
         Added to the chi-square for a jet used as b, or in a hadronic W.
+    leptonic_b_penalty : array, shape (n, E)
+        The same for the b on the leptonic side; ``b_penalty`` if absent.
     """
 
     jets: FloatArray
@@ -44,9 +47,24 @@ class Group:
     neutrino: FloatArray
     b_penalty: FloatArray | None = None
     w_penalty: FloatArray | None = None
+    leptonic_b_penalty: FloatArray | None = None
 
     def __len__(self) -> int:
         return self.jets.shape[2]
+
+
+class Joint(Protocol):
+    """Density of several quantities of a hypothesis together."""
+
+    def table(
+        self,
+        group: Group,
+        table: Hypotheses,
+        events: slice,
+        allowed: NDArray[np.bool_],
+    ) -> FloatArray:
+        """Return the contribution of allowed hypotheses, shape (P, events)."""
+        ...
 
 
 @dataclasses.dataclass(frozen=True)
@@ -77,6 +95,7 @@ def evaluate(
     table: Hypotheses,
     terms: Terms,
     *,
+    joint: Joint | None = None,
     with_share: bool = True,
 ) -> Scores:
     """Evaluate all hypotheses of all events and keep the best.
@@ -89,6 +108,8 @@ def evaluate(
         Those of n jets.
     terms : dict
         Terms that are on.
+    joint : Joint, optional
+        Density of several quantities together, added to the terms.
     with_share : bool
         Whether the share and the number of hypotheses are wanted; without, they are
         NaN and 0.
@@ -104,6 +125,8 @@ def evaluate(
     share, n_allowed = np.full(n, np.nan), np.zeros(n, dtype=np.int64)
     for events in blocks(n):
         values = chi2_table(group, table, terms, events)
+        if joint is not None:
+            values += joint.table(group, table, events, np.isfinite(values))
         best[events], chi2[events], second[events] = two_lowest(values)
         if with_share:
             with np.errstate(invalid="ignore"):  # inf - inf where all are masked
@@ -150,6 +173,23 @@ def hadronic_chi2(
     group: Group, table: Hypotheses, terms: Terms, events: slice
 ) -> Iterator[FloatArray]:
     """Yield the chi-square of every hadronic leg, in the order of the table."""
+    wanted: dict[tuple[int, int], FloatArray] = {}
+    for b, (i, j), leg in hadronic_legs(group, table, events):
+        if (i, j) not in wanted:
+            chi2 = np.zeros(len(leg.product))
+            if legs.HADRONIC.w_mass in terms:
+                chi2 += terms[legs.HADRONIC.w_mass].chi2(np.sqrt(leg.w.mass2), events)
+            if group.w_penalty is not None:
+                chi2 += group.w_penalty[i, events]
+                chi2 += group.w_penalty[j, events]
+            wanted[i, j] = chi2
+        yield _sum_of_terms(leg, terms, group.b_penalty, b, events, wanted[i, j])
+
+
+def hadronic_legs(
+    group: Group, table: Hypotheses, events: slice
+) -> Iterator[tuple[int, tuple[int, int], legs.Leg]]:
+    """Yield b, W jets and quantities of every hadronic leg, in the table's order."""
     jets = [system_of(p[:, events]) for p in group.jets.swapaxes(0, 1)]
     products, pairs = {}, []
     for i, j in table.w_pairs.tolist():
@@ -158,32 +198,39 @@ def hadronic_chi2(
         w = legs.system(
             jets[i].energy + jets[j].energy, jets[i].mass2 + jets[j].mass2 + 2 * product
         )
-        chi2 = np.zeros(len(product))
-        if legs.HADRONIC.w_mass in terms:
-            chi2 += terms[legs.HADRONIC.w_mass].chi2(np.sqrt(w.mass2), events)
-        if group.w_penalty is not None:
-            chi2 += group.w_penalty[i, events]
-            chi2 += group.w_penalty[j, events]
-        pairs.append((i, j, w, chi2))
+        pairs.append((i, j, w))
     for b, row in table.hadronic_legs.tolist():
-        i, j, w, chi2 = pairs[row]
-        leg = legs.Leg(jets[b], w, products[b, i] + products[b, j], legs.HADRONIC)
-        yield _sum_of_terms(leg, terms, group.b_penalty, b, events, chi2)
+        i, j, w = pairs[row]
+        product = products[b, i] + products[b, j]
+        yield b, (i, j), legs.Leg(jets[b], w, product, legs.HADRONIC)
 
 
 def leptonic_chi2(
     group: Group, table: Hypotheses, terms: Terms, events: slice
 ) -> Iterator[FloatArray]:
     """Yield the chi-square of every leptonic leg, in the order of the table."""
+    chi2 = None
+    for b, leg in leptonic_legs(group, table, events):
+        if chi2 is None:
+            chi2 = np.zeros(len(leg.product))
+            if legs.LEPTONIC.w_mass in terms:
+                chi2 += terms[legs.LEPTONIC.w_mass].chi2(np.sqrt(leg.w.mass2), events)
+        penalty = group.leptonic_b_penalty
+        if penalty is None:
+            penalty = group.b_penalty
+        yield _sum_of_terms(leg, terms, penalty, b, events, chi2)
+
+
+def leptonic_legs(
+    group: Group, table: Hypotheses, events: slice
+) -> Iterator[tuple[int, legs.Leg]]:
+    """Yield b and quantities of every leptonic leg, in the order of the table."""
     w_momentum = group.lepton[:, events] + group.neutrino[:, events]
     w = system_of(w_momentum)
-    chi2 = np.zeros(len(w.energy))
-    if legs.LEPTONIC.w_mass in terms:
-        chi2 += terms[legs.LEPTONIC.w_mass].chi2(np.sqrt(w.mass2), events)
     for b in table.leptonic_legs.tolist():
         jet = group.jets[:, b, events]
-        leg = legs.Leg(system_of(jet), w, minkowski(jet, w_momentum), legs.LEPTONIC)
-        yield _sum_of_terms(leg, terms, group.b_penalty, b, events, chi2)
+        product = minkowski(jet, w_momentum)
+        yield b, legs.Leg(system_of(jet), w, product, legs.LEPTONIC)
 
 
 def _sum_of_terms(

@@ -14,7 +14,7 @@ from collections.abc import Container, Iterator
 import numpy as np
 from numpy.typing import NDArray
 
-from toprecon.pairing.options import HADRONIC_TERMS, LEPTONIC_TERMS, TermName
+from toprecon.pairing.names import HADRONIC_TERMS, LEPTONIC_TERMS, TermName
 
 FloatArray = NDArray[np.float64]
 

@@ -9,51 +9,8 @@ from pydantic import model_validator
 
 from toprecon.constants import B_MASS, TOP_MASS, W_MASS
 from toprecon.options import Options, option
-
-
-class TermName(StrEnum):
-    """A quantity that the pairing chi-square compares with its target.
-
-    The first five are taken on every hadronic side, the next five on the leptonic
-    side. ``b_w_angle`` is the cosine of the laboratory angle between b and W.
-    """
-
-    W_MASS = "w_mass"
-    HADRONIC_TOP_MASS = "hadronic_top_mass"
-    TOP_ENERGY = "top_energy"
-    B_MOMENTUM = "b_momentum"
-    B_W_ANGLE = "b_w_angle"
-    LEPTONIC_W_MASS = "leptonic_w_mass"
-    LEPTONIC_TOP_MASS = "leptonic_top_mass"
-    LEPTONIC_TOP_ENERGY = "leptonic_top_energy"
-    LEPTONIC_B_MOMENTUM = "leptonic_b_momentum"
-    LEPTONIC_B_W_ANGLE = "leptonic_b_w_angle"
-
-
-HADRONIC_TERMS = tuple(TermName)[:5]
-LEPTONIC_TERMS = tuple(TermName)[5:]
-
-UNITS = {
-    name: "" if name in {TermName.B_W_ANGLE, TermName.LEPTONIC_B_W_ANGLE} else "GeV"
-    for name in TermName
-}
-
-
-class TermOptions(Options):
-    """One term (value - target)^2 / resolution^2 of the pairing chi-square."""
-
-    name: TermName = option(..., "quantity compared")
-    on: bool = option(True, "whether the term counts")
-    target: float | None = option(
-        None, "value expected; from the masses and the collision energy if absent"
-    )
-    below: float | None = option(
-        None, "resolution for values below the target; the usual one if absent", above=0
-    )
-    above: float | None = option(
-        None, "resolution for values above the target; the usual one if absent", above=0
-    )
-
+from toprecon.pairing.calibration import Calibration
+from toprecon.pairing.names import TermName, TermOptions
 
 # Masses only: they are not redundant. The others are there to be switched on.
 _PLAIN = (
@@ -71,6 +28,8 @@ class NeutrinoMethod(StrEnum):
     """Where the neutrino momentum comes from."""
 
     MISSING = "missing"
+    W_MASS = "w_mass"
+    ISR = "isr"
 
 
 class MissingSource(StrEnum):
@@ -84,7 +43,10 @@ class NeutrinoOptions(Options):
     """How the neutrino is found."""
 
     method: NeutrinoMethod = option(
-        NeutrinoMethod.MISSING, "missing momentum with E = |p|"
+        NeutrinoMethod.MISSING,
+        "missing momentum with E = |p| ('missing'); its p_z from the W mass, both roots "
+        "tried, real part of complex ones ('w_mass'); or what is left after one photon "
+        "along the beam ('isr')",
     )
     source: MissingSource = option(
         MissingSource.OBJECTS,
@@ -97,18 +59,42 @@ class TagUse(StrEnum):
     """What the b scores do in the pairing."""
 
     MASK = "mask"
+    LIKELIHOOD = "likelihood"
     IGNORE = "ignore"
+
+
+class ScoreKind(StrEnum):
+    """What an assignment is judged by."""
+
+    PLAIN = "plain"
+    CORRELATED = "correlated"
+    RATIO = "ratio"
 
 
 class PairingOptions(Options):
     """How jets are paired."""
+
+    score: ScoreKind = option(
+        ScoreKind.PLAIN,
+        "sum over the terms ('plain'), chi-square with the covariance of a calibration "
+        "('correlated'), or -2 ln of its likelihood ratio right/wrong ('ratio')",
+    )
 
     terms: tuple[TermOptions, ...] = option(
         PLAIN_TERMS, "terms of the chi-square, each at most once"
     )
     tags: TagUse = option(
         TagUse.MASK,
-        "b scores: the two highest are the b candidates ('mask'), or not used",
+        "b scores: the two highest are the b candidates ('mask'), add -2 ln of their "
+        "likelihood ratio from a calibration ('likelihood'), or are not used ('ignore')",
+    )
+    charges: bool = option(
+        False,
+        "lepton+jets: the charges of the b jets, against that of the lepton, add -2 ln of "
+        "their likelihood from a calibration",
+    )
+    calibrations: tuple[Calibration, ...] = option(
+        (), "calibrations, one per channel and collision energy, from calibrate"
     )
     cap: int = option(
         6,
@@ -138,6 +124,51 @@ class PairingOptions(Options):
             )
             raise ValueError(msg)
         return self
+
+    @model_validator(mode="after")
+    def _calibrated_if_needed(self) -> Self:
+        needs = [
+            f"{name} = {value}"
+            for name, value, needed in (
+                ("score", self.score.value, self.score is not ScoreKind.PLAIN),
+                ("tags", self.tags.value, self.tags is TagUse.LIKELIHOOD),
+                ("charges", "true", self.charges),
+            )
+            if needed
+        ]
+        if needs and not self.calibrations:
+            msg = (
+                f"{needs[0]} requires calibrations, but got none; make one with "
+                "toprecon.pairing.calibrate"
+            )
+            raise ValueError(msg)
+        return self
+
+    def calibrated(self, *calibrations: Calibration, **settings: Any) -> Self:
+        """Return the options with calibrations and what uses them.
+
+        Parameters
+        ----------
+        *calibrations : Calibration
+            From :func:`~toprecon.pairing.calibrate`; they replace those there.
+        **settings
+            Other fields, such as ``charges=True``. The score is ``ratio`` if not given.
+
+        Returns
+        -------
+        PairingOptions
+            With ``plain`` the targets and resolutions of the first calibration are
+            taken over into the terms.
+        """
+        settings = {"score": ScoreKind.RATIO, **settings}
+        result = self.replace(calibrations=calibrations, **settings)
+        if result.score is not ScoreKind.PLAIN:
+            return result
+        for term in calibrations[0].terms:
+            result = result.with_term(
+                term.name, target=term.target, below=term.below, above=term.above
+            )
+        return result
 
     def term(self, name: TermName) -> TermOptions | None:
         """Return the term of a name if it is there and on."""

@@ -8,7 +8,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from toprecon.kinematics import decay_momentum
-from toprecon.pairing.options import LEPTONIC_TERMS, PairingOptions, TermName
+from toprecon.pairing.names import LEPTONIC_TERMS, TermName
+from toprecon.pairing.options import PairingOptions
 
 FloatArray = NDArray[np.float64]
 
