@@ -6,6 +6,8 @@ assignment and how clearly it was chosen.
 
 from __future__ import annotations
 
+from toprecon.pairing.calibrating import calibrate
+from toprecon.pairing.calibration import Calibration
 from toprecon.pairing.candidates import OBSERVABLES, build
 from toprecon.pairing.chisquare import contributions, pair
 from toprecon.pairing.fit_blocks import fit
@@ -29,6 +31,7 @@ from toprecon.pairing.options import (
 __all__ = [
     "FIT_OBSERVABLES",
     "OBSERVABLES",
+    "Calibration",
     "FitOptions",
     "FitResult",
     "JetResolution",
@@ -43,6 +46,7 @@ __all__ = [
     "TermOptions",
     "TopMasses",
     "build",
+    "calibrate",
     "contributions",
     "fit",
     "pair",

@@ -6,13 +6,14 @@ import awkward as ak
 import numpy as np
 from numpy.typing import NDArray
 
-from toprecon.events import Channel, Status, require_fields
+from toprecon.events import Channel, Status
 from toprecon.pairing.candidates import Choice, build, tops_of
-from toprecon.pairing.engine import Group, evaluate
+from toprecon.pairing.engine import evaluate
 from toprecon.pairing.hypotheses import hypotheses
-from toprecon.pairing.names import HADRONIC_TERMS, LEPTONIC_TERMS
+from toprecon.pairing.names import HADRONIC_TERMS, LEPTONIC_TERMS, TermName
 from toprecon.pairing.objects import Objects, read_objects
-from toprecon.pairing.options import PairingOptions, TagUse
+from toprecon.pairing.options import PairingOptions, ScoreKind
+from toprecon.pairing.scoring import Judge
 from toprecon.pairing.terms import terms_of
 
 FloatArray = NDArray[np.float64]
@@ -53,28 +54,37 @@ def pair(
     chi2, gap, share = np.full((3, n), np.nan)
     n_assignments = np.zeros(n, dtype=np.int16)
     terms = terms_of(options, objects.sqrt_s)
-    for rows, positions in objects.groups(max(options.cap, _fewest(channel))):
-        table = hypotheses(channel, positions.shape[1])
-        group = group_of(objects, rows, positions, options)
-        used = {name: term.of_events(rows) for name, term in terms.items()}
-        scores = evaluate(group, table, used)
-        decided = scores.best >= 0
-        jets = table.assignments[scores.best]
-        # a position in the considered jets becomes a position in the event
-        index = positions - objects.offsets[rows][:, None]
-        absent = jets < 0
-        jets = np.take_along_axis(index, np.where(absent, 0, jets), axis=1)
-        jets = np.where(absent | ~decided[:, None], -1, jets)
-        assignment[rows] = jets
-        chi2[rows], share[rows] = scores.chi2, scores.share
-        gap[rows] = scores.second - scores.chi2
-        n_assignments[rows] = scores.n_allowed
+    judge = Judge.of(events, options, channel)
+    plain = options.score is ScoreKind.PLAIN
+    charge = judge.jet_charges(None)
+    for all_rows, all_positions in objects.groups(max(options.cap, _fewest(channel))):
+        for part, calibration in judge.split(all_rows, objects.sqrt_s):
+            rows, positions = all_rows[part], all_positions[part]
+            table = hypotheses(channel, positions.shape[1])
+            scores = evaluate(
+                judge.group(objects, rows, positions, calibration),
+                table,
+                {k: term.of_events(rows) for k, term in terms.items()} if plain else {},
+                joint=judge.joint(calibration, objects.sqrt_s[rows]),
+            )
+            decided = scores.best >= 0
+            jets = table.assignments[scores.best]
+            # a position in the considered jets becomes a position in the event
+            index = positions - objects.offsets[rows][:, None]
+            absent = jets < 0
+            jets = np.take_along_axis(index, np.where(absent, 0, jets), axis=1)
+            assignment[rows] = np.where(absent | ~decided[:, None], -1, jets)
+            chi2[rows], share[rows] = scores.chi2, scores.share
+            gap[rows] = scores.second - scores.chi2
+            n_assignments[rows] = scores.n_allowed
+            if channel is Channel.ALL_HADRONIC and calibration is not None:
+                charge[positions] = judge.jet_charges(calibration)[positions]
     status = objects.status.copy()
     status[(status == Status.OK) & (assignment[:, 0] < 0)] = Status.NON_FINITE
     if channel is Channel.LEPTON_JETS:
         sign, sign_share = -objects.lepton_charge, np.ones(n)
     else:
-        sign, sign_share = charge_sign(events, objects, assignment)
+        sign, sign_share = charge_sign(charge, objects, assignment)
     good = status == Status.OK
     signs = np.where(good, sign, 0).astype(np.int8)
     swapped = assignment[:, [3, 4, 5, 0, 1, 2]]
@@ -95,47 +105,17 @@ def _fewest(channel: Channel) -> int:
     return 6 if channel is Channel.ALL_HADRONIC else 4
 
 
-def group_of(
-    objects: Objects,
-    rows: NDArray[np.int64],
-    positions: NDArray[np.int64],
-    options: PairingOptions,
-) -> Group:
-    """Return the engine's arrays of some events."""
-    jets = np.ascontiguousarray(objects.jets[:, positions.T])
-    b_penalty = w_penalty = None
-    if options.tags is TagUse.MASK:
-        candidate = b_candidates(objects.btag[positions].T)
-        b_penalty = np.where(candidate, 0.0, np.inf)
-        w_penalty = np.where(candidate, np.inf, 0.0)
-    return Group(
-        jets=jets,
-        lepton=objects.lepton[:, rows],
-        neutrino=objects.neutrino[:, rows],
-        b_penalty=b_penalty,
-        w_penalty=w_penalty,
-    )
-
-
-def b_candidates(btag: FloatArray) -> NDArray[np.bool_]:
-    """Return which jets have the two highest scores (first of equals), shape (n, E)."""
-    order = np.argsort(-btag, axis=0, kind="stable")
-    result = np.zeros(btag.shape, dtype=bool)
-    np.put_along_axis(result, order[:2], values=True, axis=0)
-    return result
-
-
 def charge_sign(
-    events: ak.Array, objects: Objects, assignment: NDArray[np.int8]
+    charge: FloatArray, objects: Objects, assignment: NDArray[np.int8]
 ) -> tuple[FloatArray, FloatArray]:
     """Return +1 where the first side has the more negative b jet, and its probability.
 
     Parameters
     ----------
-    events : ak.Array, shape (E,)
-        Events whose jets have ``vertex_charge`` and ``track_charge``.
+    charge : array, shape (J,)
+        Log likelihood ratio of anti-b over b of all jets.
     objects : Objects
-        Their arrays.
+        Arrays of the events.
     assignment : array of int8, shape (E, 6)
         Chosen jets.
 
@@ -144,11 +124,6 @@ def charge_sign(
     sign, sign_share : array, shape (E,)
         Equal charges count as +1 with probability one half.
     """
-    require_fields(events.jets, ("vertex_charge", "track_charge"), where="events.jets")
-    flat = ak.flatten(events.jets, axis=1)
-    charge = np.nan_to_num(ak.to_numpy(flat.vertex_charge)) + np.nan_to_num(
-        ak.to_numpy(flat.track_charge)
-    )
     b = objects.offsets[:-1, None] + assignment[:, [0, 3]]
     found = (assignment[:, [0, 3]] >= 0).all(axis=1)
     difference = np.zeros(len(assignment))
@@ -180,24 +155,41 @@ def contributions(
     Returns
     -------
     dict of array, shape (E,)
-        Contribution by name of the term; NaN where there is no assignment. Their sum
-        is the chi-square of an assignment that the b scores allow.
+        Contribution by name of the term; NaN where there is no assignment. With a
+        density, a term counts what it adds to those before it. ``b_scores`` and
+        ``charges`` are there if they are used. The sum is the chi-square of an
+        assignment that the b scores allow.
     """
     options = options or PairingOptions()
     if isinstance(assignment, ak.Array) and "assignment" in assignment.fields:
         assignment = assignment["assignment"]
-    tops = build(events, np.asarray(assignment), options, channel=channel)
-    result = {}
-    everything = slice(0, len(events))
-    for name, term in terms_of(options, ak.to_numpy(events.sqrt_s)).items():
-        hadronic = name in HADRONIC_TERMS
-        if channel is Channel.ALL_HADRONIC and not hadronic:
-            continue
-        values = ak.to_numpy(tops.observables[f"pairing.{name}"])
-        chi2 = term.chi2(values, everything)
-        if channel is Channel.ALL_HADRONIC:
-            other = LEPTONIC_TERMS[HADRONIC_TERMS.index(name)]
-            values = ak.to_numpy(tops.observables[f"pairing.{other}"])
-            chi2 = chi2 + term.chi2(values, everything)
-        result[name.value] = chi2
+    chosen = np.asarray(assignment)
+    tops = build(events, chosen, options, channel=channel)
+    sqrt_s = ak.to_numpy(events.sqrt_s).astype(np.float64)
+    values = {
+        name: ak.to_numpy(tops.observables[f"pairing.{name}"]) for name in TermName
+    }
+    result: dict[str, FloatArray] = {}
+    if options.score is ScoreKind.PLAIN:
+        everything = slice(0, len(events))
+        for name, term in terms_of(options, sqrt_s).items():
+            if channel is Channel.LEPTON_JETS:
+                result[name.value] = term.chi2(values[name], everything)
+            elif name in HADRONIC_TERMS:
+                other = LEPTONIC_TERMS[HADRONIC_TERMS.index(name)]
+                result[name.value] = term.chi2(values[name], everything) + term.chi2(
+                    values[other], everything
+                )
+    good = np.flatnonzero(ak.to_numpy(tops.status) == Status.OK)
+    judge = Judge.of(events, options, channel)
+    counts = ak.to_numpy(ak.num(events.jets, axis=1))
+    jets = (np.cumsum(counts) - counts)[:, None] + chosen
+    for part, calibration in judge.split(good, sqrt_s):
+        rows = good[part]
+        parts = judge.single_jets(events, chosen[rows], jets[rows], rows, calibration)
+        joint = judge.joint(calibration, sqrt_s[rows])
+        if joint is not None:
+            parts = {**joint.contributions(values, rows, channel), **parts}
+        for key, value in parts.items():
+            result.setdefault(key, np.full(len(events), np.nan))[rows] = value
     return result

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 from pydantic import model_validator
 
-from toprecon.errors import InputError
+from toprecon.errors import OptionError
 from toprecon.options import Options, option
 
 FloatArray = NDArray[np.float64]
@@ -132,7 +132,7 @@ def fit_mixture(
 
     Raises
     ------
-    InputError
+    OptionError
         If the sample is too small for so many components.
 
     References
@@ -147,7 +147,7 @@ def fit_mixture(
             f"{n_components} components in {d} quantities; got {n}; use more events or "
             "fewer components"
         )
-        raise InputError(msg)
+        raise OptionError(msg)
     whole = np.atleast_2d(np.cov(values))
     added = floor * np.diag(np.diag(whole))
     z = whitening(whole + added) @ (values - values.mean(axis=1, keepdims=True))

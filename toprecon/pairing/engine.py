@@ -225,6 +225,8 @@ def leptonic_legs(
     group: Group, table: Hypotheses, events: slice
 ) -> Iterator[tuple[int, legs.Leg]]:
     """Yield b and quantities of every leptonic leg, in the order of the table."""
+    if not table.is_leptonic:
+        return
     w_momentum = group.lepton[:, events] + group.neutrino[:, events]
     w = system_of(w_momentum)
     for b in table.leptonic_legs.tolist():

@@ -8,12 +8,13 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
+from toprecon.events import Channel
 from toprecon.pairing import legs
 from toprecon.pairing.calibration import Calibration, transformed
 from toprecon.pairing.densities import Mixture
 from toprecon.pairing.engine import Group, hadronic_legs, leptonic_legs
 from toprecon.pairing.hypotheses import Hypotheses
-from toprecon.pairing.names import LEPTONIC_TERMS, TermName
+from toprecon.pairing.names import HADRONIC_TERMS, LEPTONIC_TERMS, TermName
 from toprecon.pairing.options import ScoreKind
 
 FloatArray = NDArray[np.float64]
@@ -80,6 +81,24 @@ class JointScore:
         wrong = _part(self.calibration.wrong, n).log_density(values[:n])
         return 2.0 * (wrong - right)
 
+    def contributions(
+        self,
+        values: dict[TermName, FloatArray],
+        rows: NDArray[np.int64],
+        channel: Channel,
+    ) -> dict[str, FloatArray]:
+        """Return the steps by name for chosen pairs; all-hadronic: sums of the sides."""
+        names = self.calibration.names
+        sides = [names]
+        if channel is Channel.ALL_HADRONIC:
+            other = tuple(LEPTONIC_TERMS[HADRONIC_TERMS.index(n)] for n in names)
+            sides.append(other)
+        total = np.zeros((len(names), len(rows)))
+        for side in sides:
+            chosen = [transformed(n, values[n][rows], self.sqrt_s) for n in side]
+            total += np.stack(self.steps(np.stack(chosen)))
+        return {n.value: row for n, row in zip(names, total, strict=True)}
+
     def steps(self, values: FloatArray) -> list[FloatArray]:
         """Return what each quantity adds to the score, given those before it."""
         sums = [self.score(values, n) for n in range(len(values) + 1)]
@@ -91,13 +110,20 @@ def _part(mixture: Mixture, n: int) -> Mixture:
 
 
 def leg_values(
-    leg: legs.Leg, names: tuple[TermName, ...], sqrt_s: FloatArray
+    leg: legs.Leg,
+    names: tuple[TermName, ...],
+    sqrt_s: FloatArray,
+    *,
+    plain: bool = False,
 ) -> FloatArray:
-    """Return the transformed quantities of a leg, in the order of their names (D, E)."""
+    """Return quantities of a leg by name (D, E), transformed unless plain."""
     leptonic = leg.side is legs.LEPTONIC
     wanted = [name for name in names if (name in LEPTONIC_TERMS) is leptonic]
     values = dict(leg.values(wanted))
     if leg.side.w_mass in wanted:
         values[leg.side.w_mass] = np.sqrt(leg.w.mass2)
-    rows = [transformed(name, values[name], sqrt_s) for name in wanted]
+    rows = [
+        values[name] if plain else transformed(name, values[name], sqrt_s)
+        for name in wanted
+    ]
     return np.stack(rows) if rows else np.empty((0, len(sqrt_s)))

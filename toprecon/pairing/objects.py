@@ -107,7 +107,7 @@ def read_objects(
     lepton = neutrino = np.full((4, n), np.nan)
     charge = np.full(n, np.nan)
     if channel is Channel.LEPTON_JETS:
-        lepton, charge = _leading_lepton(events)
+        lepton, charge = leading_lepton(events)
         neutrino = missing_momentum(events, options.neutrino.source)
         neutrino[0] = np.sqrt(neutrino[1] ** 2 + neutrino[2] ** 2 + neutrino[3] ** 2)
         with np.errstate(invalid="ignore"):
@@ -170,8 +170,8 @@ def missing_momentum(events: ak.Array, source: MissingSource) -> FloatArray:
     return total
 
 
-def _leading_lepton(events: ak.Array) -> tuple[FloatArray, FloatArray]:
-    """Momentum and charge of the most energetic lepton, NaN without."""
+def leading_lepton(events: ak.Array) -> tuple[FloatArray, FloatArray]:
+    """Return momentum and charge of the most energetic lepton, NaN without."""
     leptons = events.leptons
     require_fields(leptons, ("charge",), where="events.leptons")
     counts = ak.to_numpy(ak.num(leptons, axis=1))
