@@ -27,11 +27,18 @@ from toprecon.pairing.options import (
     ScoreKind,
     TagUse,
 )
+from toprecon.pairing.reliability import (
+    ChargePurity,
+    Reliability,
+    charge_purity,
+    reliability,
+)
 
 __all__ = [
     "FIT_OBSERVABLES",
     "OBSERVABLES",
     "Calibration",
+    "ChargePurity",
     "FitOptions",
     "FitResult",
     "JetResolution",
@@ -40,6 +47,7 @@ __all__ = [
     "NeutrinoMethod",
     "NeutrinoOptions",
     "PairingOptions",
+    "Reliability",
     "ScoreKind",
     "TagUse",
     "TermName",
@@ -47,7 +55,9 @@ __all__ = [
     "TopMasses",
     "build",
     "calibrate",
+    "charge_purity",
     "contributions",
     "fit",
     "pair",
+    "reliability",
 ]

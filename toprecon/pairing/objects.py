@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from toprecon.errors import MissingFieldError
 from toprecon.events import Channel, Status, components, require_fields
 from toprecon.pairing.hypotheses import FEWEST_JETS
+from toprecon.pairing.neutrino import neutrino_momentum
 from toprecon.pairing.options import MissingSource, PairingOptions
 
 FloatArray = NDArray[np.float64]
@@ -108,12 +109,14 @@ def read_objects(
     charge = np.full(n, np.nan)
     if channel is Channel.LEPTON_JETS:
         lepton, charge = leading_lepton(events)
-        neutrino = missing_momentum(events, options.neutrino.source)
-        neutrino[0] = np.sqrt(neutrino[1] ** 2 + neutrino[2] ** 2 + neutrino[3] ** 2)
+        missing = missing_momentum(events, options.neutrino.source)
+        method = options.neutrino.method
+        neutrino = neutrino_momentum(lepton, missing, method, options.w_mass)
+        known = np.isfinite(missing).all(axis=0) & np.isfinite(lepton).all(axis=0)
         with np.errstate(invalid="ignore"):
-            status[~(neutrino[0] > 0)] = Status.NO_NEUTRINO
-        finite = np.isfinite(lepton).all(axis=0) & np.isfinite(neutrino).all(axis=0)
-        status[~finite] = Status.NON_FINITE
+            none = ~(neutrino[0] > 0)
+        status[~known] = Status.NON_FINITE
+        status[known & none] = Status.NO_NEUTRINO
         none = ~np.isin(charge, (-1.0, 1.0))
         status[none] = Status.TOO_FEW_OBJECTS
     bad_jet = ~np.isfinite(jets).all(axis=0)

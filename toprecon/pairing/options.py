@@ -44,9 +44,9 @@ class NeutrinoOptions(Options):
 
     method: NeutrinoMethod = option(
         NeutrinoMethod.MISSING,
-        "missing momentum with E = |p| ('missing'); its p_z from the W mass, both roots "
-        "tried, real part of complex ones ('w_mass'); or what is left after one photon "
-        "along the beam ('isr')",
+        "missing momentum with E = |p| ('missing'); p_z from the W mass, the root nearer "
+        "to the missing one or the real part of complex ones ('w_mass'); or what is "
+        "left after one photon along the beam ('isr')",
     )
     source: MissingSource = option(
         MissingSource.OBJECTS,
