@@ -27,7 +27,7 @@ from toprecon.pairing.options import (
     ScoreKind,
     TagUse,
 )
-from toprecon.pairing.reliability import (
+from toprecon.pairing.stated_shares import (
     ChargePurity,
     Reliability,
     charge_purity,

@@ -28,7 +28,11 @@ def _term_observable(
 
 OBSERVABLES: tuple[Observable, ...] = (
     Observable(
-        "pairing.chi2", "", "chi-square of the best assignment", (0, 50), "pairing chi2"
+        "pairing.chi2",
+        "",
+        "chi-square of the best assignment; calibrated: -2 ln of its likelihood ratio",
+        (0, 50),
+        "pairing chi2",
     ),
     Observable(
         "pairing.gap",

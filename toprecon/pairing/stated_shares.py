@@ -65,13 +65,14 @@ def reliability(
     value, good, w = value[keep], good[keep], w[keep]
     n = len(edge) - 1
     index = np.minimum(np.searchsorted(edge, value, side="right") - 1, n - 1)
-    total, squares, stated, rights = (
-        np.bincount(index, weights=x, minlength=n)
-        for x in (w, w * w, w * value, w * good)
-    )
+
+    def sums(values: FloatArray) -> FloatArray:
+        return np.bincount(index, weights=values, minlength=n).astype(np.float64)
+
+    total, stated, rights = sums(w), sums(w * value), sums(w * good)
     with np.errstate(invalid="ignore", divide="ignore"):
         fraction = rights / total
-        error = np.sqrt(fraction * (1 - fraction) * squares) / total
+        error = np.sqrt(fraction * (1 - fraction) * sums(w * w)) / total
         return Reliability(edge, stated / total, fraction, error, total)
 
 
