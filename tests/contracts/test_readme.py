@@ -61,7 +61,7 @@ def test_the_commands_run(clone, capsys):
         for line in block.splitlines()
         if line.startswith("toprecon ")
     ]
-    assert [line.split()[1] for line in lines] == ["plan", "study", "generate"]
+    assert [line.split()[1] for line in lines] == ["describe", "plan", "study", "generate"]
     plan, study, generate = lines
     command, _, target = plan.partition(" > ")
     assert main(shlex.split(command)[1:]) == 0
