@@ -62,7 +62,9 @@ def test_the_commands_run(clone, capsys):
         if line.startswith("toprecon ")
     ]
     assert [line.split()[1] for line in lines] == ["describe", "plan", "study", "generate"]
-    plan, study, generate = lines
+    describe, plan, study, generate = lines
+    assert main(shlex.split(describe)[1:]) == 0
+    assert "6000 entries" in capsys.readouterr().out
     command, _, target = plan.partition(" > ")
     assert main(shlex.split(command)[1:]) == 0
     Path(target).write_text(capsys.readouterr().out, encoding="utf-8")
