@@ -28,12 +28,12 @@ def layout(beams=None, **options):
 
 
 @pytest.fixture(scope="module")
-def cld(event_data):
+def simulated_higgs(event_data):
     return event_data / "open" / "edm4hep_schema3_CLD_ZHnunubb_jettags_1evt.root"
 
 
 @pytest.fixture(scope="module")
-def ild(event_data):
+def particle_flow(event_data):
     return event_data / "open" / "edm4hep_schema1_ILD_PandoraPFOs_10evt.root"
 
 
@@ -48,17 +48,17 @@ def collections(events):
     return edm4hep_files.from_events(events, np.arange(len(events)))
 
 
-def test_collection_numbers_are_hashes_of_names(cld):
+def test_collection_numbers_are_hashes_of_names(simulated_higgs):
     # numbers stored by podio in a file written by others
-    with uproot.open(cld) as file:
+    with uproot.open(simulated_higgs) as file:
         stored = stored_ids(file)
     assert len(stored) > 100
     assert all(collection_id(name) == number for name, number in stored.items())
 
 
-def test_the_fully_simulated_event_is_read_as_its_writers_meant(cld):
+def test_the_fully_simulated_event_is_read_as_its_writers_meant(simulated_higgs):
     with pytest.warns(TopreconWarning, match="all weights are 0"):
-        source = open_events(cld, layout=layout(LAB))
+        source = open_events(simulated_higgs, layout=layout(LAB))
     events = source.read()
     assert events.weight.to_list() == [1.0]
     jets, particles = events.jets[0], events.particles[0]
@@ -74,10 +74,10 @@ def test_the_fully_simulated_event_is_read_as_its_writers_meant(cld):
     assert source.report.count(Note.NO_TRUTH) == 1
 
 
-def test_beams_show_their_crossing_angle_and_energy(cld):
+def test_beams_show_their_crossing_angle_and_energy(simulated_higgs):
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", TopreconWarning)
-        source = open_events(cld)
+        source = open_events(simulated_higgs)
     frame = source.description.files[0].frame
     # a 30 mrad crossing at 240 GeV: both beams carry 1.8 GeV along x
     assert np.isclose(frame.crossing_angle, 0.030, atol=1e-6)
@@ -87,8 +87,8 @@ def test_beams_show_their_crossing_angle_and_energy(cld):
     assert np.isclose(events.missing.E[0], 240 - np.sum(events.particles.E), atol=0.1)
 
 
-def test_every_daughter_has_its_parent(cld):
-    columns = RootColumns(str(cld))
+def test_every_daughter_has_its_parent(simulated_higgs):
+    columns = RootColumns(str(simulated_higgs))
     file = Collections(columns, columns.collection_ids())
     names = [
         f"MCParticles.{m}_{e}"
@@ -113,8 +113,8 @@ def test_every_daughter_has_its_parent(cld):
     assert closed == pairs["parents"]
 
 
-def test_the_quarks_of_the_boson_are_its_daughters(cld):
-    with uproot.open(cld) as file:
+def test_the_quarks_of_the_boson_are_its_daughters(simulated_higgs):
+    with uproot.open(simulated_higgs) as file:
         tree = file["events"]
         pdg = tree["MCParticles.PDG"].array()[0]
         begin, end = (
@@ -126,8 +126,8 @@ def test_the_quarks_of_the_boson_are_its_daughters(cld):
         assert 25 in pdg[index[begin[first] : end[first]]]
 
 
-def test_particle_flow_files_without_jets_and_truth_are_read(ild):
-    source = open_events(ild)
+def test_particle_flow_files_without_jets_and_truth_are_read(particle_flow):
+    source = open_events(particle_flow)
     events = source.read()
     assert len(events) == 10
     n = ak.num(events.particles) + ak.num(events.leptons)
@@ -137,7 +137,7 @@ def test_particle_flow_files_without_jets_and_truth_are_read(ild):
     assert np.all(events.weight == 1.0)
     assert "truth" not in events.fields
     assert source.report.count(Note.NO_TRUTH) == 10
-    assert "truth" in describe(ild).missing
+    assert "truth" in describe(particle_flow).missing
     assert ak.all(ak.num(events.jets) == 0)
 
 
