@@ -31,7 +31,7 @@ OBSERVABLES: tuple[Observable, ...] = (
         "pairing.chi2",
         "",
         "chi-square of the best assignment; calibrated: -2 ln of its likelihood ratio",
-        (0, 50),
+        (-20, 50),
         "pairing chi2",
     ),
     Observable(
@@ -57,6 +57,14 @@ OBSERVABLES: tuple[Observable, ...] = (
         "probability that the candidate called the top is one, from the charges",
         (0.5, 1),
         "share of the charge sign",
+    ),
+    Observable(
+        "pairing.direction_share",
+        "",
+        "probability that the hemisphere of the top is right, over all assignments and "
+        "'none is right'; lepton+jets with the likelihood ratio, else NaN",
+        (0.5, 1),
+        "share of the hemisphere",
     ),
     _term_observable(
         TermName.W_MASS,
@@ -141,7 +149,7 @@ class Choice:
         second, 0 without a decision.
     sign_share : array, shape (E,)
         Probability of that sign.
-    chi2, gap, share : array, shape (E,)
+    chi2, gap, share, direction_share : array, shape (E,)
         Outcome of the pairing; NaN if none was made.
     n_assignments : array of int, shape (E,)
         Assignments compared.
@@ -155,6 +163,7 @@ class Choice:
     chi2: FloatArray
     gap: FloatArray
     share: FloatArray
+    direction_share: FloatArray
     n_assignments: NDArray[np.int16]
     status: NDArray[np.uint8]
 
@@ -201,6 +210,7 @@ def build(
         chi2=nothing,
         gap=nothing,
         share=nothing,
+        direction_share=nothing,
         n_assignments=np.where(missing, 0, 1).astype(np.int16),
         status=status,
     )
@@ -245,6 +255,7 @@ def tops_of(objects: Objects, choice: Choice, channel: Channel) -> ak.Array:
         "pairing.share": choice.share,
         "pairing.n_assignments": choice.n_assignments.astype(np.float64),
         "pairing.sign_share": choice.sign_share,
+        "pairing.direction_share": choice.direction_share,
         **_kinematic_observables(sides, top_is_hadronic, channel),
         "pairing.neutrino_energy": np.where(good, objects.neutrino[0], np.nan),
     }

@@ -8,8 +8,9 @@ from numpy.typing import NDArray
 
 from toprecon.events import Channel, Status
 from toprecon.pairing.candidates import Choice, build, tops_of
-from toprecon.pairing.engine import evaluate
-from toprecon.pairing.hypotheses import hypotheses
+from toprecon.pairing.directions import direction_share, forward_probability
+from toprecon.pairing.engine import Further, Group, evaluate
+from toprecon.pairing.hypotheses import Hypotheses, hypotheses
 from toprecon.pairing.names import HADRONIC_TERMS, LEPTONIC_TERMS, TermName
 from toprecon.pairing.objects import Objects, read_objects
 from toprecon.pairing.options import PairingOptions, ScoreKind
@@ -51,21 +52,26 @@ def pair(
     objects = read_objects(events, options, channel)
     n = len(events)
     assignment = np.full((n, 6), -1, dtype=np.int8)
-    chi2, gap, share = np.full((3, n), np.nan)
+    chi2, gap, share, hemisphere = np.full((4, n), np.nan)
     n_assignments = np.zeros(n, dtype=np.int16)
     terms = terms_of(options, objects.sqrt_s)
     judge = Judge.of(events, options, channel)
     plain = options.score is ScoreKind.PLAIN
+    votes = options.score is ScoreKind.RATIO and channel is Channel.LEPTON_JETS
     charge = judge.jet_charges(None)
     for all_rows, all_positions in objects.groups(max(options.cap, _fewest(channel))):
         for part, calibration in judge.split(all_rows, objects.sqrt_s):
             rows, positions = all_rows[part], all_positions[part]
             table = hypotheses(channel, positions.shape[1])
+            group = judge.group(objects, rows, positions, calibration)
             scores = evaluate(
-                judge.group(objects, rows, positions, calibration),
+                group,
                 table,
                 {k: term.of_events(rows) for k, term in terms.items()} if plain else {},
                 joint=judge.joint(calibration, objects.sqrt_s[rows]),
+                further=_hemisphere(group, table, -objects.lepton_charge[rows])
+                if votes
+                else None,
             )
             decided = scores.best >= 0
             jets = table.assignments[scores.best]
@@ -76,6 +82,7 @@ def pair(
             assignment[rows] = np.where(absent | ~decided[:, None], -1, jets)
             chi2[rows], share[rows] = scores.chi2, scores.share
             gap[rows] = scores.second - scores.chi2
+            hemisphere[rows] = scores.extra
             n_assignments[rows] = scores.n_allowed
             if channel is Channel.ALL_HADRONIC and calibration is not None:
                 charge[positions] = judge.jet_charges(calibration)[positions]
@@ -95,10 +102,21 @@ def pair(
         chi2=chi2,
         gap=gap,
         share=share,
+        direction_share=hemisphere,
         n_assignments=n_assignments,
         status=status,
     )
     return tops_of(objects, choice, channel)
+
+
+def _hemisphere(group: Group, table: Hypotheses, sign: FloatArray) -> Further:
+    """Return what tells the engine how likely the hemisphere is right."""
+
+    def share(chi2: FloatArray, best: NDArray[np.int64], events: slice) -> FloatArray:
+        forward = forward_probability(group, table, sign, events)
+        return direction_share(forward, chi2, best)
+
+    return share
 
 
 def _fewest(channel: Channel) -> int:

@@ -8,7 +8,7 @@ some thousand events are several times as fast as whole arrays and need a few MB
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from typing import Protocol
 
 import numpy as np
@@ -22,6 +22,7 @@ from toprecon.pairing.terms import Term
 
 FloatArray = NDArray[np.float64]
 Terms = Mapping[TermName, Term]
+Further = Callable[[FloatArray, NDArray[np.int64], slice], FloatArray]
 
 BLOCK = 4096  # events; larger blocks leave the cache, smaller ones cost calls
 
@@ -81,6 +82,8 @@ class Scores:
         exp(-chi2/2) of the best over the sum for all hypotheses.
     n_allowed : array of int, shape (E,)
         Hypotheses that are not masked.
+    extra : array, shape (E,)
+        What ``further`` made of the chi-squares; NaN without.
     """
 
     best: NDArray[np.int64]
@@ -88,6 +91,7 @@ class Scores:
     second: FloatArray
     share: FloatArray
     n_allowed: NDArray[np.int64]
+    extra: FloatArray
 
 
 def evaluate(
@@ -97,6 +101,7 @@ def evaluate(
     *,
     joint: Joint | None = None,
     with_share: bool = True,
+    further: Further | None = None,
 ) -> Scores:
     """Evaluate all hypotheses of all events and keep the best.
 
@@ -113,6 +118,9 @@ def evaluate(
     with_share : bool
         Whether the share and the number of hypotheses are wanted; without, they are
         NaN and 0.
+    further : callable, optional
+        One more number per event, of the chi-squares (P, events), the best hypothesis
+        and the slice of events.
 
     Returns
     -------
@@ -123,6 +131,7 @@ def evaluate(
     best = np.empty(n, dtype=np.int64)
     chi2, second = np.empty(n), np.empty(n)
     share, n_allowed = np.full(n, np.nan), np.zeros(n, dtype=np.int64)
+    extra = np.full(n, np.nan)
     for events in blocks(n):
         values = chi2_table(group, table, terms, events)
         if joint is not None:
@@ -133,9 +142,11 @@ def evaluate(
                 weights = np.exp(-0.5 * (values - chi2[events]))
             share[events] = 1.0 / weights.sum(axis=0)
             n_allowed[events] = np.isfinite(values).sum(axis=0)
+        if further is not None:
+            extra[events] = further(values, best[events], events)
     none = ~np.isfinite(chi2)
     best[none], chi2[none], share[none] = -1, np.nan, np.nan
-    return Scores(best, chi2, second, share, n_allowed)
+    return Scores(best, chi2, second, share, n_allowed, extra)
 
 
 def blocks(n: int) -> Iterator[slice]:
