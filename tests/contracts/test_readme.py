@@ -61,7 +61,12 @@ def test_the_commands_run(clone, capsys):
         for line in block.splitlines()
         if line.startswith("toprecon ")
     ]
-    assert [line.split()[1] for line in lines] == ["describe", "plan", "study", "generate"]
+    assert [line.split()[1] for line in lines] == [
+        "describe",
+        "plan",
+        "study",
+        "generate",
+    ]
     describe, plan, study, generate = lines
     assert main(shlex.split(describe)[1:]) == 0
     assert "6000 entries" in capsys.readouterr().out
