@@ -199,3 +199,15 @@ def test_lab_without_jupyterlab_says_how_to_get_it(tmp_path, monkeypatch, capsys
     monkeypatch.setitem(sys.modules, "jupyterlab", None)
     assert main(["lab", str(tmp_path)]) == 2
     assert "run pip install -e '.[lab]' in the clone" in capsys.readouterr().err
+
+
+def test_calibrate_writes_a_plan_that_study_takes(tmp_path, capsys):
+    samples = Path(__file__).parents[2] / "sample_events"
+    files = [str(samples / f"lepjets_550_{h}.root") for h in ("LR", "RL")]
+    plan = tmp_path / "plan.toml"
+    assert main(["calibrate", *files, "--out", str(plan)]) == 0
+    assert "right before -> after" in capsys.readouterr().out
+    assert main(["study", *files, "--plan", str(plan)]) == 0
+    assert "caution" in capsys.readouterr().out
+    assert main(["calibrate", *files, "--out", str(plan)]) == 2
+    assert "a new file is required" in capsys.readouterr().err

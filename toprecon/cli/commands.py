@@ -19,6 +19,7 @@ from toprecon.errors import InputError, MissingPackageError, OptionError
 from toprecon.study import (
     Recipe,
     StudyPlan,
+    calibrate_plan,
     check_target,
     produce,
     result_text,
@@ -59,6 +60,39 @@ def study(options: argparse.Namespace) -> int:
         print(json.dumps(result.to_mapping(), allow_nan=False))
     else:
         print(result_text(result))
+    return 0
+
+
+def calibrate(options: argparse.Namespace) -> int:
+    """Calibrate the pairing of a plan.
+
+    Parameters
+    ----------
+    options : Namespace
+        Arguments of ``toprecon calibrate``.
+
+    Returns
+    -------
+    int
+        0.
+
+    Raises
+    ------
+    InputError
+        If the plan to write is there already.
+    """
+    if Path(options.out).exists():
+        msg = f"{options.out}: a new file is required, but this exists; choose another"
+        raise InputError(msg)
+    plan = StudyPlan.load(options.plan) if options.plan else StudyPlan()
+    plan = plan.with_settings(dict(_setting(text) for text in options.settings))
+    one = options.files[0] if len(options.files) == 1 else options.files
+    found = calibrate_plan(
+        one, plan, score=options.score, layout=options.layout, progress=_progress()
+    )
+    path = found.plan.save(options.out)
+    print(found)
+    print(f"plan written to {path}", file=sys.stderr)
     return 0
 
 

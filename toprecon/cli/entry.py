@@ -88,6 +88,39 @@ def parser() -> argparse.ArgumentParser:
     )
     study.set_defaults(command=commands.study)
 
+    calibrate = subcommands.add_parser(
+        "calibrate",
+        help="fit the densities of right and wrong pairings, write a plan that uses them",
+    )
+    calibrate.add_argument(
+        "files", nargs="+", metavar="FILE", help="top pairs with truth, or a catalogue"
+    )
+    calibrate.add_argument(
+        "--plan", help="study plan (TOML); the default plan if absent"
+    )
+    calibrate.add_argument(
+        "--out",
+        metavar="PLAN",
+        required=True,
+        help="plan to write (TOML); the calibrations go into files beside it",
+    )
+    calibrate.add_argument("--layout", help="layout of the files (TOML)")
+    calibrate.add_argument(
+        "--set",
+        dest="settings",
+        action="append",
+        default=[],
+        metavar="SECTION.KEY=VALUE",
+        help="change one setting of the plan; may be repeated",
+    )
+    calibrate.add_argument(
+        "--score",
+        choices=("ratio", "correlated", "plain"),
+        default="ratio",
+        help="what an assignment is judged by; 'ratio' if absent",
+    )
+    calibrate.set_defaults(command=commands.calibrate)
+
     describe = subcommands.add_parser(
         "describe", help="say what is in a file and how it would be read"
     )

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from toprecon.pairing.calibrating import calibrate
 from toprecon.pairing.calibration import Calibration
-from toprecon.pairing.candidates import OBSERVABLES, build
+from toprecon.pairing.candidates import OBSERVABLES, build, observables_with
 from toprecon.pairing.chisquare import contributions, pair
 from toprecon.pairing.fit_blocks import fit
 from toprecon.pairing.fit_options import (
@@ -58,6 +58,7 @@ __all__ = [
     "charge_purity",
     "contributions",
     "fit",
+    "observables_with",
     "pair",
     "reliability",
 ]

@@ -14,7 +14,7 @@ from toprecon.pairing import legs
 from toprecon.pairing.engine import system_of
 from toprecon.pairing.names import TermName
 from toprecon.pairing.objects import Objects, read_objects
-from toprecon.pairing.options import PairingOptions
+from toprecon.pairing.options import PairingOptions, ScoreKind
 
 FloatArray = NDArray[np.float64]
 
@@ -31,7 +31,7 @@ OBSERVABLES: tuple[Observable, ...] = (
         "pairing.chi2",
         "",
         "chi-square of the best assignment; calibrated: -2 ln of its likelihood ratio",
-        (-20, 50),
+        (0, 50),
         "pairing chi2",
     ),
     Observable(
@@ -134,6 +134,29 @@ OBSERVABLES: tuple[Observable, ...] = (
         "neutrino energy",
     ),
 )
+
+
+def observables_with(options: PairingOptions) -> tuple[Observable, ...]:
+    """Return the observables as they are with some settings of the pairing.
+
+    Parameters
+    ----------
+    options : PairingOptions
+        With the ratio as score, ``pairing.chi2`` is no chi-square and may be negative.
+
+    Returns
+    -------
+    tuple of Observable
+        The same names as :data:`OBSERVABLES`.
+    """
+    if options.score is not ScoreKind.RATIO:
+        return OBSERVABLES
+    return tuple(
+        dataclasses.replace(item, range=(-40, 20), label="pairing -2 ln(right/wrong)")
+        if item.name == "pairing.chi2"
+        else item
+        for item in OBSERVABLES
+    )
 
 
 @dataclasses.dataclass(frozen=True)

@@ -28,6 +28,11 @@ from toprecon.events import (
 from toprecon.io import describe, load_layout, open_events, write_events
 from toprecon.migration import UnfoldingOptions
 from toprecon.selection import VariationOptions, vary
+from toprecon.study.calibrating import (
+    CalibratedPlan,
+    CalibrationQuality,
+    calibrate_plan,
+)
 from toprecon.study.chunks import (
     check_references,
     part_path,
@@ -74,6 +79,8 @@ __all__ = [
     "Binning",
     "Branch",
     "BranchChoice",
+    "CalibratedPlan",
+    "CalibrationQuality",
     "Channel",
     "CutOptions",
     "Cutting",
@@ -103,6 +110,7 @@ __all__ = [
     "angle_linearity",
     "apply_cuts",
     "bias_meaning",
+    "calibrate_plan",
     "check_references",
     "check_target",
     "closure_of",

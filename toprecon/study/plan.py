@@ -12,7 +12,6 @@ import hashlib
 import json
 import math
 import os
-import tomllib
 from collections.abc import Iterable
 from enum import StrEnum
 from pathlib import Path
@@ -24,14 +23,28 @@ from pydantic import field_validator, model_validator
 from toprecon.asymmetry import EstimatorOptions
 from toprecon.boosted import OBSERVABLES as BOOSTED_OBSERVABLES
 from toprecon.boosted import BoostedOptions
-from toprecon.errors import InputError, OptionError, nearest
+from toprecon.errors import InputError, OptionError
 from toprecon.events import Channel, Observable, find_observable
 from toprecon.migration import MigrationOptions
 from toprecon.options import Options, option
-from toprecon.pairing import FIT_OBSERVABLES, FitOptions, PairingOptions
+from toprecon.pairing import (
+    FIT_OBSERVABLES,
+    Calibration,
+    FitOptions,
+    PairingOptions,
+    observables_with,
+)
 from toprecon.pairing import OBSERVABLES as PAIRING_OBSERVABLES
 from toprecon.selection import OBSERVABLES as SELECTION_OBSERVABLES
 from toprecon.selection import SelectionOptions
+from toprecon.study.plan_files import (
+    calibration_name,
+    read_calibration,
+    read_calibrations,
+    write_calibrations,
+    write_text,
+)
+from toprecon.study.settings import changes, put, toml_data, toml_value
 from toprecon.truth import TruthOptions
 
 PLAN_VERSION = 1
@@ -197,14 +210,7 @@ class StudyPlan(Options):
         OptionError
             If it is not TOML, or a setting is unknown or out of range.
         """
-        try:
-            return cls(**tomllib.loads(text))
-        except tomllib.TOMLDecodeError as error:
-            msg = f"{where}: must be TOML; {error}"
-            raise OptionError(msg) from error
-        except OptionError as error:
-            msg = f"{where}: {error}"
-            raise OptionError(msg) from None
+        return cls._from_data(toml_data(text, where), where, None)
 
     @classmethod
     def load(cls, path: str | os.PathLike[str]) -> Self:
@@ -231,7 +237,18 @@ class StudyPlan(Options):
             reason = getattr(error, "strerror", None) or "not a text file"
             msg = f"{path}: a study plan (TOML) is required, but {reason.lower()}"
             raise InputError(msg) from error
-        return cls.from_toml(text, where=str(path))
+        return cls._from_data(toml_data(text, str(path)), str(path), Path(path))
+
+    @classmethod
+    def _from_data(cls, data: dict[str, Any], where: str, path: Path | None) -> Self:
+        """Make a plan of data from a file; ``where`` starts the message."""
+        if path is not None:
+            data = read_calibrations(data, path)
+        try:
+            return cls(**data)
+        except OptionError as error:
+            msg = f"{where}: {error}"
+            raise OptionError(msg) from None
 
     def to_toml(self) -> str:
         """Return the plan as TOML text, every setting written out."""
@@ -243,7 +260,8 @@ class StudyPlan(Options):
         Parameters
         ----------
         path : path
-            File to write; replaced if it exists.
+            File to write; replaced if it exists. Calibrations of the pairing go into
+            files of their own beside it, named by their hash.
 
         Returns
         -------
@@ -252,9 +270,8 @@ class StudyPlan(Options):
         """
         target = Path(path)
         target.parent.mkdir(parents=True, exist_ok=True)
-        partial = target.with_name(f".{target.name}.{os.getpid()}.part")
-        partial.write_text(self.to_toml(), encoding="utf-8")
-        partial.replace(target)
+        data = write_calibrations(self.to_mapping(), target.parent)
+        write_text(target, tomli_w.dumps(data))
         return target
 
     def with_settings(self, settings: dict[str, Any]) -> Self:
@@ -278,7 +295,7 @@ class StudyPlan(Options):
         """
         data = self.to_mapping()
         for path, value in settings.items():
-            _put(data, path, _toml_value(value) if isinstance(value, str) else value)
+            put(data, path, toml_value(value) if isinstance(value, str) else value)
         return type(self)(**data)
 
     def with_cut(
@@ -334,10 +351,60 @@ class StudyPlan(Options):
             plan = plan.with_cut(observable, low, high)
         return plan
 
+    def with_calibrations(
+        self, *calibrations: Calibration | str | os.PathLike[str], **settings: Any
+    ) -> Self:
+        """Return the plan with calibrations of the pairing, and what uses them.
+
+        Parameters
+        ----------
+        *calibrations : Calibration or path
+            One per collision energy; paths are those of files written by :meth:`save`.
+        **settings
+            Other fields of the pairing, such as ``charges=True``. The score is
+            ``ratio`` if not given.
+
+        Returns
+        -------
+        StudyPlan
+            A new plan.
+
+        Raises
+        ------
+        InputError
+            If a file is not there.
+        OptionError
+            If it is not the calibration that its name says.
+        """
+        tables = [
+            item
+            if isinstance(item, Calibration)
+            else Calibration(**read_calibration(Path(item), "calibration"))
+            for item in calibrations
+        ]
+        return self.replace(pairing=self.pairing.calibrated(*tables, **settings))
+
     def as_code(self) -> str:
-        """Return a Python expression that makes this plan from the default one."""
+        """Return a Python expression that makes this plan from the default one.
+
+        Returns
+        -------
+        str
+            Calibrations appear as the names of the files that :meth:`save` writes.
+        """
         text = "StudyPlan()"
-        changed = _changes(type(self)().to_mapping(), self.to_mapping())
+        data, usual = self.to_mapping(), type(self)().to_mapping()
+        tables = data["pairing"].pop("calibrations", [])
+        usual["pairing"].pop("calibrations", None)
+        changed = changes(usual, data)
+        if tables:
+            names = "".join(f"{calibration_name(t)!r}, " for t in tables)
+            score = changed.get("pairing.score", "plain")
+            if score == "plain":  # put back below, without new targets of the terms
+                changed["pairing.score"], score = score, "ratio"
+            else:
+                del changed["pairing.score"]
+            text += f".with_calibrations({names}score={score!r})"
         cuts = changed.pop("cuts", None)
         if changed:
             lines = "".join(f"    {k!r}: {v!r},\n" for k, v in changed.items())
@@ -356,6 +423,12 @@ class StudyPlan(Options):
     def active_cuts(self) -> tuple[CutOptions, ...]:
         """Cuts that are switched on."""
         return tuple(cut for cut in self.cuts if cut.on)
+
+    @property
+    def observables(self) -> tuple[Observable, ...]:
+        """Every observable a cut can use, with the range it has under this plan."""
+        own = {item.name: item for item in observables_with(self.pairing)}
+        return tuple(own.get(item.name, item) for item in OBSERVABLES)
 
     @property
     def reconstruct_settings(self) -> dict[str, Any]:
@@ -397,54 +470,3 @@ OBSERVABLES: tuple[Observable, ...] = (
 def _hash(data: dict[str, Any]) -> str:
     """Hash of plain data, independent of the order of keys."""
     return hashlib.sha256(json.dumps(data, sort_keys=True).encode()).hexdigest()
-
-
-def _changes(old: Any, new: Any, path: str = "") -> dict[str, Any]:
-    """Find the settings, by path, that differ from the old ones."""
-    if old == new:
-        return {}
-    inside = f"{path}." if path else ""
-    if isinstance(old, dict) and isinstance(new, dict) and set(old) <= set(new):
-        out: dict[str, Any] = {}
-        for key in new:
-            out.update(_changes(old.get(key), new[key], f"{inside}{key}"))
-        return out
-    if isinstance(old, list) and isinstance(new, list) and 0 < len(old) == len(new):
-        out = {}
-        for index, (a, b) in enumerate(zip(old, new, strict=True)):
-            out.update(_changes(a, b, f"{inside}{index}"))
-        return out
-    return {path: new}
-
-
-def _toml_value(text: str) -> Any:
-    """Read text as a TOML value; plain words stay text."""
-    try:
-        return tomllib.loads(f"value = {text}")["value"]
-    except tomllib.TOMLDecodeError:
-        return text
-
-
-def _put(data: Any, path: str, value: Any) -> None:
-    """Set a value by its dotted path; numbers in the path index lists."""
-    parts = path.split(".")
-    for depth, part in enumerate(parts):
-        here = ".".join(parts[: depth + 1])
-        last = depth == len(parts) - 1
-        if isinstance(data, list):
-            if not part.isdigit() or int(part) >= len(data):
-                msg = f"{here}: must be a position below {len(data)}; got {part!r}"
-                raise OptionError(msg)
-            key: Any = int(part)
-        elif isinstance(data, dict):
-            if not last and part not in data:
-                msg = f"{here}: unknown option{nearest(part, data)}"
-                raise OptionError(msg)
-            key = part
-        else:
-            msg = f"{here}: unknown option; {'.'.join(parts[:depth])} is a single value"
-            raise OptionError(msg)
-        if last:
-            data[key] = value
-        else:
-            data = data[key]

@@ -8,9 +8,9 @@ from typing import Any
 import ipywidgets
 
 from toprecon.figures import CutFigure, class_legend, png
-from toprecon.study import Binning, CutOptions
+from toprecon.study import Binning, CutOptions, Observable
 from toprecon.widgets.base import Panel
-from toprecon.widgets.observables import BY_NAME, offer
+from toprecon.widgets.observables import observable_in, offer
 from toprecon.widgets.parts import Picture, close_all, helping, labelled
 
 STEPS = 200
@@ -31,9 +31,13 @@ class CutRow:
     """
 
     def __init__(
-        self, cut: CutOptions, change: Callable[[], None], remove: Callable[[], None]
+        self,
+        observable: Observable,
+        cut: CutOptions,
+        change: Callable[[], None],
+        remove: Callable[[], None],
     ) -> None:
-        self.observable = BY_NAME[cut.observable]
+        self.observable = observable
         self.binning = Binning.regular(BINS, *self.observable.range)
         low, high = self.observable.range
         self.known = cut
@@ -227,8 +231,11 @@ class CutsPanel(Panel):
     def _follow_plan(self) -> None:
         """Add and drop rows for cuts that others put into or took out of the plan."""
         cuts = {cut.observable: cut for cut in self.live.plan.cuts}
-        for name, row in self.rows.items():
-            if name in cuts:
+        for name, row in list(self.rows.items()):
+            if row.observable != observable_in(self.live.plan, name):
+                close_all(self.rows.pop(name).widget)  # another range: made anew below
+                self._shown.pop(name, None)
+            elif name in cuts:
                 row.follow(cuts[name])
         if list(cuts) == list(self.rows):
             return
@@ -255,7 +262,10 @@ class CutsPanel(Panel):
     def _make(self, cut: CutOptions) -> None:
         name = cut.observable
         self.rows[name] = CutRow(
-            cut, lambda: self._changed(name), lambda: self._removed(name)
+            observable_in(self.live.plan, name),
+            cut,
+            lambda: self._changed(name),
+            lambda: self._removed(name),
         )
 
     def _changed(self, name: str) -> None:

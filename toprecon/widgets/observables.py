@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from toprecon.study import OBSERVABLES, LiveStudy, Observable
+from toprecon.study import OBSERVABLES, LiveStudy, Observable, StudyPlan
 
 BY_NAME = {item.name: item for item in OBSERVABLES}
 USUALLY_CUT_FROM_ABOVE = ("pairing.chi2", "fit.chi2")
@@ -12,9 +12,15 @@ USUALLY_CUT_FROM_ABOVE = ("pairing.chi2", "fit.chi2")
 
 def observables_of(live: LiveStudy) -> list[Observable]:
     """Return the observables of the table shown; all known ones before there is one."""
-    if live.shown_plan is None:
+    plan = live.shown_plan
+    if plan is None:
         return list(OBSERVABLES)
-    return [item for item in OBSERVABLES if item.name in live.table]
+    return [item for item in plan.observables if item.name in live.table]
+
+
+def observable_in(plan: StudyPlan, name: str) -> Observable:
+    """Return an observable with the range and label that it has under a plan."""
+    return next(item for item in plan.observables if item.name == name)
 
 
 def offer(choice: Any, live: LiveStudy, *first: tuple[str, str]) -> None:
