@@ -218,11 +218,12 @@ def test_stop_gives_up_between_chunks_and_resume_goes_on(events, monkeypatch):
     with pytest.raises(StudyError, match="stopped before the end"):
         live.wait()
     assert stopped.is_set()
-    assert live.progress == (0, 0)
+    assert not live.progress.is_running
     monkeypatch.setattr(live_source, "reconstruct", reconstruct)
     live.resume()
     assert live.wait().cut_flow.counts[0] == len(events)
-    assert live.progress == (len(events), len(events))
+    assert live.progress.done == live.progress.total == len(events)
+    assert str(live.progress).startswith("reconstructing")
     live.close()
 
 
@@ -311,3 +312,60 @@ def test_finish_of_full_sums_is_what_a_settled_study_shows(live, table):
     live.set_cut("pairing.chi2", high=12.5)
     shown = live.wait()
     assert shown.by_class == finish(summarise(table, live.plan), live.plan).by_class
+
+
+@pytest.mark.parametrize("synchronous", [False, True])
+def test_long_work_has_its_turn_and_gives_its_outcome(table, synchronous):
+    live = LiveStudy(table, PLAN, synchronous=synchronous)
+    live.wait()
+    told, seen, failures = [], [], []
+    live.on_change(lambda one: told.append(str(one.progress)))
+
+    def work(report):
+        report(1, 3)
+        return threading.current_thread()
+
+    live.run("counting", work, seen.append, failed=failures.append)
+    live.wait()
+    assert len(seen) == 1
+    assert not failures
+    assert (seen[0] is threading.current_thread()) == synchronous
+    if not synchronous:
+        assert "counting: 1 of 3 chunks" in told
+    assert not live.progress.is_running
+    live.close()
+
+
+@pytest.mark.parametrize("synchronous", [False, True])
+def test_outcome_of_long_work_may_change_the_plan(table, synchronous):
+    live = LiveStudy(table, PLAN, synchronous=synchronous)
+    live.wait()
+    plan = PLAN.with_cut("pairing.chi2", high=20)
+    live.run("choosing", lambda _: plan, live.set_plan, failed=print)
+    live.wait()
+    assert live.shown_plan == plan
+    live.close()
+
+
+def test_failed_and_stopped_work_is_reported_and_the_study_goes_on(table):
+    live = LiveStudy(table, PLAN)
+    live.wait()
+    failures, reason = [], "of no use"
+
+    def wrong(_):
+        raise ValueError(reason)
+
+    def endless(report):
+        live.stop()
+        report(1, 2)
+
+    live.run("trying", wrong, print, failed=failures.append)
+    live.run("waiting", endless, print, failed=failures.append)
+    live.wait()
+    assert [str(error) for error in failures] == [
+        "of no use",
+        "waiting: stopped before the end",
+    ]
+    live.set_cut("pairing.chi2", high=10)
+    assert live.wait().plan.active_cuts
+    live.close()

@@ -14,7 +14,7 @@ from __future__ import annotations
 
 import functools
 import threading
-from collections import OrderedDict
+from collections import deque
 from collections.abc import Callable
 from typing import Any
 
@@ -24,24 +24,17 @@ from numpy.typing import NDArray
 from toprecon.errors import StudyError
 from toprecon.events import Binning, EventTable
 from toprecon.figures import EventView
-from toprecon.study.distributions import TableMasks
+from toprecon.study.live_results import LiveResults
 from toprecon.study.live_source import LiveSource
-from toprecon.study.moving import moved_sums
+from toprecon.study.live_tasks import GivenUp, Progress, Task, Work
 from toprecon.study.one_event import view_event
 from toprecon.study.plan import StudyPlan
-from toprecon.study.result import StudyResult, finish
-from toprecon.study.sums import StudySums, check_plan, summarise
+from toprecon.study.result import StudyResult
 
-TABLES_KEPT = 3
-RESULTS_KEPT = 64
 PAUSE = 0.3
 """Seconds without a change after which the study settles."""
 
 Listener = Callable[["LiveStudy"], Any]
-
-
-class _GivenUp(Exception):  # noqa: N818 (a signal between two lines, no error)
-    """A newer plan is wanted, or the work is to stop."""
 
 
 class LiveStudy:
@@ -73,13 +66,7 @@ class LiveStudy:
         self.synchronous = synchronous
         self._source = LiveSource(source, layout, catalogue)
         self._plan = plan or StudyPlan()
-        self._tables: OrderedDict[str, EventTable] = OrderedDict()
-        self._results: OrderedDict[str, StudyResult] = OrderedDict()
-        self._masks: tuple[EventTable, TableMasks] | None = None
-        self._sums: tuple[StudyPlan, StudySums] | None = None
-        if isinstance(self.source, EventTable):
-            check_plan(self.source, self._plan)
-            self._tables[self._plan.reconstruct_hash] = self.source
+        self._kept = LiveResults(self._source, self._plan, self.lock)
         self._listeners: list[Listener] = []
         self._changed = threading.Condition()  # guards the wishes, never held long
         self._wanted = True
@@ -89,7 +76,8 @@ class LiveStudy:
         self._shown: tuple[StudyPlan, StudyResult] | None = None
         self._settled = False
         self._error: Exception | None = None
-        self._progress = (0, 0)
+        self._progress = Progress(0, 0)
+        self._tasks: deque[Task] = deque()
         self._worker: threading.Thread | None = None
         if synchronous:
             self._work_once()
@@ -120,15 +108,15 @@ class LiveStudy:
         return self._error
 
     @property
-    def progress(self) -> tuple[int, int]:
-        """Events reconstructed, and in all; equal when nothing is running."""
+    def progress(self) -> Progress:
+        """How far the work in hand is."""
         return self._progress
 
     @property
     def is_busy(self) -> bool:
         """Whether a newer result is on its way."""
         with self._changed:
-            return self._wanted or self._working
+            return self._wanted or self._working or bool(self._tasks)
 
     @property
     def is_settled(self) -> bool:
@@ -145,9 +133,10 @@ class LiveStudy:
         """Event table of the result shown."""
         with self.lock:
             plan = self.shown_plan or self._plan
-            if plan.reconstruct_hash not in self._tables:
+            table = self._kept.table(plan)
+            if table is None:
                 raise self._error or StudyError("live study: no table is there yet")
-            return self._tables[plan.reconstruct_hash]
+            return table
 
     @property
     def result(self) -> StudyResult:
@@ -235,6 +224,38 @@ class LiveStudy:
         if self.synchronous:
             self._work_once()
 
+    def run(
+        self,
+        doing: str,
+        work: Work,
+        then: Callable[[Any], Any],
+        *,
+        failed: Callable[[Exception], Any],
+        unit: str = "chunks",
+    ) -> None:
+        """Do long work in the worker thread, with progress and a way to stop.
+
+        Parameters
+        ----------
+        doing : str
+            What is done, such as ``"calibrating"``.
+        work : callable
+            Called with a function that takes (done, total) and raises when the work
+            is to stop; must not touch the study.
+        then : callable
+            Called with what ``work`` returns, under the lock.
+        failed : callable
+            Called with the error instead, under the lock.
+        unit : str
+            What is counted.
+        """
+        with self._changed:
+            self._tasks.append(Task(doing, unit, work, then, failed))
+            self._stopped = False
+            self._changed.notify_all()
+        if self.synchronous:
+            self._run_task()
+
     def wait(self, timeout: float | None = 60.0) -> StudyResult:
         """Wait until nothing newer is on its way and the study has settled.
 
@@ -260,7 +281,7 @@ class LiveStudy:
             raise StudyError(msg)
 
         def is_done() -> bool:
-            busy = self._wanted or self._working
+            busy = self._wanted or self._working or self._tasks
             return self._closed or not (busy or not (self._settled or self._error))
 
         with self._changed:
@@ -303,7 +324,7 @@ class LiveStudy:
         with self.lock:
             table, plan, result = self.table, self.shown_plan or self._plan, self.result
             factors = result.by_helicity.get(beams, result.beams).factors
-            return self._masks_of(table).distribution(
+            return self._kept.masks(table).distribution(
                 plan, factors, observable, binning
             )
 
@@ -341,7 +362,7 @@ class LiveStudy:
         """Return which rows of the table pass everything, shape (E,)."""
         with self.lock:
             plan = self.shown_plan or self._plan
-            return self._masks_of(self.table).passing(plan)
+            return self._kept.masks(self.table).passing(plan)
 
     def code(self) -> str:
         """Return the lines of Python that give the present result."""
@@ -350,12 +371,6 @@ class LiveStudy:
             f"plan = {self._plan.as_code()}\n"
             "result = run_study(source, plan)"
         )
-
-    def _masks_of(self, table: EventTable) -> TableMasks:
-        """Return the masks of the table shown."""
-        if self._masks is None or self._masks[0] is not table:
-            self._masks = (table, TableMasks(table))
-        return self._masks[1]
 
     def _edit(self, change: Callable[[StudyPlan], StudyPlan]) -> None:
         """Replace the plan by a changed one and want its result."""
@@ -379,13 +394,17 @@ class LiveStudy:
             with self._changed:
                 unsettled = not (self._settled or self._error or self._stopped)
                 self._changed.wait_for(
-                    lambda: self._wanted or self._closed,
+                    lambda: self._wanted or self._closed or bool(self._tasks),
                     PAUSE if unsettled else None,
                 )
                 if self._closed:
                     return
+                on_plan = self._wanted or not self._tasks
             try:
-                self._work_once()
+                if on_plan:
+                    self._work_once()
+                else:
+                    self._run_task()
             except Exception as caught:  # noqa: BLE001 (of a listener; wait raises it)
                 self._error = caught
 
@@ -401,8 +420,9 @@ class LiveStudy:
         error: Exception | None = None
         found: tuple[StudyResult, bool] | None = None
         try:
-            found = self._result_of(plan, quick=quick)
-        except _GivenUp:
+            report = functools.partial(self._report, plan)
+            found = self._kept.result(plan, report, quick=quick)
+        except GivenUp:
             if self._stopped:
                 error = StudyError("stopped before the end; change a setting or resume")
         except Exception as caught:  # noqa: BLE001 (shown to whoever asks)
@@ -422,53 +442,58 @@ class LiveStudy:
                 self._working = False
                 self._changed.notify_all()
 
+    def _run_task(self) -> None:
+        """Do the oldest of the tasks and tell whoever asked for it."""
+        with self._changed:
+            task = self._tasks.popleft()
+            self._working = True
+
+        def report(done: int, total: int) -> None:
+            with self._changed:
+                if self._closed or self._stopped:
+                    raise GivenUp
+            self._show(Progress(done, total, task.doing, task.unit))
+
+        try:
+            found: Any = None
+            error: Exception | None = None
+            try:
+                report(0, 1)
+                found = task.work(report)
+            except GivenUp:
+                error = StudyError(f"{task.doing}: stopped before the end")
+                self._stopped = False  # the study itself goes on
+            except Exception as caught:  # noqa: BLE001 (given to whoever asked)
+                error = caught
+            self._progress = Progress(0, 0)
+            with self.lock:
+                self._tell()
+                if error is None:
+                    task.then(found)
+                else:
+                    task.failed(error)
+        finally:
+            with self._changed:
+                self._working = False
+                self._changed.notify_all()
+
+    def _show(self, progress: Progress) -> None:
+        """Tell the listeners how far the work is."""
+        self._progress = progress
+        if not self.synchronous:
+            with self.lock:
+                self._tell()
+
     def _tell(self) -> None:
         """Call the listeners, under the lock."""
         for listener in list(self._listeners):
             listener(self)
-
-    def _result_of(self, plan: StudyPlan, *, quick: bool) -> tuple[StudyResult, bool]:
-        """Find or make the result of a plan, and say whether it is the full one."""
-        with self.lock:
-            known = self._results.get(plan.hash)
-            table = self._tables.get(plan.reconstruct_hash)
-        if table is None:
-            table = self._source.table(plan, functools.partial(self._report, plan))
-            with self.lock:
-                _keep(self._tables, plan.reconstruct_hash, table, TABLES_KEPT)
-        if known is not None:
-            return known, True
-        moved = None
-        if quick and self._sums is not None:
-            old, sums = self._sums
-            if old.reconstruct_hash == plan.reconstruct_hash:
-                moved = moved_sums(sums, table, old, plan)
-        full = moved is None
-        sums = summarise(table, plan) if moved is None else moved
-        self._sums = (plan, sums)
-        report, inputs = self._source.origin
-        result = finish(sums, plan, report=report, inputs=inputs)
-        if full:
-            with self.lock:
-                _keep(self._results, plan.hash, result, RESULTS_KEPT)
-        return result, full
 
     def _report(self, plan: StudyPlan, done: int, total: int) -> None:
         """Show the progress; give up if another table is wanted."""
         with self._changed:
             newer = self._plan.reconstruct_hash != plan.reconstruct_hash
             if self._closed or self._stopped or (self._wanted and newer):
-                self._progress = (0, 0)
-                raise _GivenUp
-        self._progress = (done, total)
-        if not self.synchronous:
-            with self.lock:
-                self._tell()
-
-
-def _keep(cache: OrderedDict[str, Any], key: str, value: Any, most: int) -> None:
-    """Put into a cache that forgets what was not used for longest."""
-    cache[key] = value
-    cache.move_to_end(key)
-    while len(cache) > most:
-        cache.popitem(last=False)
+                self._progress = Progress(0, 0)
+                raise GivenUp
+        self._show(Progress(done, total))

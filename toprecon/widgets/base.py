@@ -64,7 +64,7 @@ class Shared:
         )
         self.bar = ipywidgets.IntProgress(layout=ipywidgets.Layout(width="22em"))
         self.stop = ipywidgets.Button(
-            description="stop", tooltip="stop reconstructing; any change goes on"
+            description="stop", tooltip="stop the work in hand; any change goes on"
         )
         self.stop.on_click(lambda _: self.live.stop())
         self.progress = ipywidgets.HBox(
@@ -150,12 +150,12 @@ class Shared:
             close_all(widget)
 
     def _show_progress(self) -> None:
-        """Show the bar while events are reconstructed."""
-        done, total = self.live.progress
-        running = self.live.is_busy and done < total
+        """Show the bar while long work is done."""
+        progress = self.live.progress
+        running = self.live.is_busy and progress.is_running
         if running:
-            self.bar.max, self.bar.value = total, done
-            self.say(f"reconstructing: {done:,} of {total:,} events")
+            self.bar.max, self.bar.value = progress.total, progress.done
+            self.say(str(progress))
         display = None if running else "none"
         if self.progress.layout.display != display:
             self.progress.layout.display = display
