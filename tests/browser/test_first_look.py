@@ -165,3 +165,13 @@ def test_plan_is_saved_from_the_desk(desk, expect, served):
 
     plan = StudyPlan.load(served / "notebooks" / "study_plan.toml")
     assert plan.cuts[0].observable == "pairing.chi2"
+
+
+def test_pairing_is_calibrated_by_a_button(desk, expect):
+    desk.get_by_role("button", name="Pairing", exact=True).click()
+    desk.get_by_role("button", name="calibrate", exact=True).click()
+    expect(desk.get_by_text("right after [%]")).to_be_visible(timeout=60_000)
+    expect(desk.get_by_label("pairing -2 ln(right/wrong)")).to_be_visible()
+    expect(desk.locator(".toprecon-error")).to_have_count(0)
+    desk.get_by_role("button", name="calibrate", exact=True).scroll_into_view_if_needed()
+    photograph(desk, "calibrated")

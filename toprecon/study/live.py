@@ -366,9 +366,14 @@ class LiveStudy:
 
     def code(self) -> str:
         """Return the lines of Python that give the present result."""
+        made = (
+            "# the calibration is saved beside the plan, or made by calibrate_plan\n"
+            if self._plan.pairing.calibrations
+            else ""
+        )
         return (
             "from toprecon import StudyPlan, run_study\n\n"
-            f"plan = {self._plan.as_code()}\n"
+            f"{made}plan = {self._plan.as_code()}\n"
             "result = run_study(source, plan)"
         )
 

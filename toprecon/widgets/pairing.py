@@ -9,8 +9,14 @@ import ipywidgets
 from toprecon import figures
 from toprecon.study import Binning
 from toprecon.widgets.base import Panel
+from toprecon.widgets.calibrating import CalibrationControls
 from toprecon.widgets.controls import OptionControls
-from toprecon.widgets.observables import BY_NAME, USUALLY_CUT_FROM_ABOVE, offer
+from toprecon.widgets.observables import (
+    BY_NAME,
+    USUALLY_CUT_FROM_ABOVE,
+    observable_in,
+    offer,
+)
 from toprecon.widgets.parts import Picture, helping, labelled
 from toprecon.widgets.terms import TermControls
 
@@ -42,11 +48,13 @@ class PairingPanel(Panel):
             item.observe(lambda _: self.redraw(), names="value")
         self.terms = TermControls(self)
         self.settings = OptionControls(self, self.live.plan.pairing, "pairing")
+        self.calibration = CalibrationControls(self)
         self.fit = OptionControls(self, self.live.plan.fit, "fit")
         note = []
         if not self.live.can_reconstruct:
             self.terms.disable()
             self.settings.disable()
+            self.calibration.disable()
             self.fit.disable()
             note = [
                 helping("fixed: the study runs on a saved event table, without events")
@@ -59,6 +67,8 @@ class PairingPanel(Panel):
             *note,
             self.terms.widget,
             self.settings.widget,
+            labelled("Calibration"),
+            self.calibration.widget,
             labelled("Constrained fit"),
             self.fit.widget,
         ]
@@ -82,7 +92,8 @@ class PairingPanel(Panel):
             return
         if not self.live.is_settled:
             return
-        observable = BY_NAME[self.observable.value]
+        plan = self.live.shown_plan or self.live.plan
+        observable = observable_in(plan, self.observable.value)
         n = BINS if view == DISTRIBUTION else FINE_BINS
         binning = Binning.regular(n, *observable.range)
         classes = self.live.distribution(
@@ -117,7 +128,7 @@ class PairingPanel(Panel):
                 f"class_figure({beams}.asymmetry)\n"
                 f"{beams}.asymmetry.by_class"
             )
-        observable = BY_NAME[self.observable.value]
+        observable = observable_in(self.live.plan, self.observable.value)
         low, high = observable.range
         n = BINS if self.view.value == DISTRIBUTION else FINE_BINS
         return (
