@@ -24,6 +24,7 @@ from numpy.typing import NDArray
 from toprecon.errors import StudyError
 from toprecon.events import Binning, EventTable
 from toprecon.figures import EventView
+from toprecon.study.live_editing import PlanEditing
 from toprecon.study.live_results import LiveResults
 from toprecon.study.live_source import LiveSource
 from toprecon.study.live_tasks import GivenUp, Progress, Task, Work
@@ -37,7 +38,7 @@ PAUSE = 0.3
 Listener = Callable[["LiveStudy"], Any]
 
 
-class LiveStudy:
+class LiveStudy(PlanEditing):
     """A study that follows its plan.
 
     Parameters
@@ -168,49 +169,6 @@ class LiveStudy:
                     self._listeners.remove(listener)
 
         return remove
-
-    def configure(self, **sections: Any) -> None:
-        """Replace sections of the plan, such as ``pairing=PairingOptions(...)``.
-
-        Parameters
-        ----------
-        **sections
-            By the names of :class:`StudyPlan`.
-        """
-        self._edit(lambda plan: plan.replace(**sections))
-
-    def set_settings(self, settings: dict[str, Any]) -> None:
-        """Replace single settings by path, such as ``{"pairing.cap": 6}``."""
-        self._edit(lambda plan: plan.with_settings(settings))
-
-    def set_cut(
-        self,
-        observable: str,
-        low: float | None = None,
-        high: float | None = None,
-        *,
-        on: bool = True,
-    ) -> None:
-        """Set or replace the cut on one observable."""
-        self._edit(lambda plan: plan.with_cut(observable, low, high, on=on))
-
-    def remove_cut(self, observable: str) -> None:
-        """Take the cut on one observable out of the plan."""
-        self._edit(
-            lambda plan: plan.replace(
-                cuts=tuple(c for c in plan.cuts if c.observable != observable)
-            )
-        )
-
-    def set_plan(self, plan: StudyPlan) -> None:
-        """Want the results of another plan.
-
-        Parameters
-        ----------
-        plan : StudyPlan
-            Takes the place of the present one at once; results follow.
-        """
-        self._edit(lambda _: plan)
 
     def stop(self) -> None:
         """Stop reconstructing; the next change, or :meth:`resume`, goes on."""

@@ -14,7 +14,7 @@ from pydantic.fields import FieldInfo
 from toprecon.errors import OptionError
 from toprecon.options import Options
 from toprecon.widgets.base import Panel
-from toprecon.widgets.parts import helping
+from toprecon.widgets.parts import helping, spelled
 
 
 class OptionControls:
@@ -151,7 +151,7 @@ def _control(field: FieldInfo, value: Any, name: str) -> Any:
     kind: Any = field.annotation
     extra = field.json_schema_extra
     unit = str(extra.get("unit", "")) if isinstance(extra, dict) else ""
-    label = name.replace("_", " ") + (f" [{unit}]" if unit else "")
+    label = spelled(name) + (f" [{unit}]" if unit else "")
     common = {
         "description": label,
         "tooltip": field.description or "",
@@ -166,6 +166,7 @@ def _control(field: FieldInfo, value: Any, name: str) -> Any:
             **common,
         )
     if kind is bool:
+        common["style"] = {"description_width": "8em"}  # the label is behind the box
         return ipywidgets.Checkbox(value=value, **common)
     if isinstance(kind, type) and issubclass(kind, Enum):
         choices = [(str(item.value), item) for item in kind]

@@ -21,6 +21,12 @@ from toprecon.widgets.parts import Picture, helping, labelled
 from toprecon.widgets.terms import TermControls
 
 CLASSES, DISTRIBUTION, PURITY = "classes", "distribution", "purity against a cut"
+SECTIONS = (
+    "Calibration",
+    "Terms of the chi-square",
+    "Pairing",
+    "Constrained fit",
+)
 BINS, FINE_BINS = 60, 240
 
 
@@ -50,6 +56,16 @@ class PairingPanel(Panel):
         self.settings = OptionControls(self, self.live.plan.pairing, "pairing")
         self.calibration = CalibrationControls(self)
         self.fit = OptionControls(self, self.live.plan.fit, "fit")
+        self.sections = ipywidgets.Accordion(
+            children=[
+                self.calibration.widget,
+                self.terms.widget,
+                self.settings.widget,
+                self.fit.widget,
+            ],
+            titles=SECTIONS,
+            selected_index=0,
+        )
         note = []
         if not self.live.can_reconstruct:
             self.terms.disable()
@@ -63,14 +79,9 @@ class PairingPanel(Panel):
             self.view,
             self.observable,
             self.picture.widget,
-            labelled("Settings of the pairing"),
+            labelled("Settings"),
             *note,
-            self.terms.widget,
-            self.settings.widget,
-            labelled("Calibration"),
-            self.calibration.widget,
-            labelled("Constrained fit"),
-            self.fit.widget,
+            self.sections,
         ]
 
     def paint(self) -> None:

@@ -117,6 +117,12 @@ class Picture:
         self.widget.value = live.png()
 
 
+def spelled(name: str) -> str:
+    """Return the name of a setting in words, particles as they are written."""
+    words = {"w": "W", "isr": "ISR", "afb": "A_FB"}
+    return " ".join(words.get(word, word) for word in name.split("_"))
+
+
 def labelled(text: str) -> Any:
     """Return a heading of a group of controls."""
     return ipywidgets.HTML(f'<div class="toprecon-title">{html.escape(text)}</div>')

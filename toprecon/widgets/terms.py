@@ -9,7 +9,7 @@ import ipywidgets
 
 from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import number_or_none
-from toprecon.widgets.parts import helping
+from toprecon.widgets.parts import helping, spelled
 
 BOXES = {
     "target": "target",
@@ -36,7 +36,7 @@ class TermControls:
                 "on": ipywidgets.Checkbox(
                     value=term.on,
                     indent=False,
-                    description=name.replace("_", " "),
+                    description=spelled(name),
                     layout=ipywidgets.Layout(width="14em"),
                 ),
                 **{
