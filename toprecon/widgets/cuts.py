@@ -232,7 +232,7 @@ class CutsPanel(Panel):
         """Add and drop rows for cuts that others put into or took out of the plan."""
         cuts = {cut.observable: cut for cut in self.live.plan.cuts}
         for name, row in list(self.rows.items()):
-            if row.observable != observable_in(self.live.plan, name):
+            if row.observable != self._observable(name):
                 close_all(self.rows.pop(name).widget)  # another range: made anew below
                 self._shown.pop(name, None)
             elif name in cuts:
@@ -262,11 +262,15 @@ class CutsPanel(Panel):
     def _make(self, cut: CutOptions) -> None:
         name = cut.observable
         self.rows[name] = CutRow(
-            observable_in(self.live.plan, name),
+            self._observable(name),
             cut,
             lambda: self._changed(name),
             lambda: self._removed(name),
         )
+
+    def _observable(self, name: str) -> Observable:
+        """Return an observable as it is in the result shown."""
+        return observable_in(self.live.shown_plan or self.live.plan, name)
 
     def _changed(self, name: str) -> None:
         with self.errors.guard():
