@@ -64,15 +64,18 @@ def test_the_commands_run(clone, capsys):
     assert [line.split()[1] for line in lines] == [
         "describe",
         "plan",
+        "calibrate",
         "study",
         "generate",
     ]
-    describe, plan, study, generate = lines
+    describe, plan, calibrate, study, generate = lines
     assert main(shlex.split(describe)[1:]) == 0
     assert "6000 entries" in capsys.readouterr().out
     command, _, target = plan.partition(" > ")
     assert main(shlex.split(command)[1:]) == 0
     Path(target).write_text(capsys.readouterr().out, encoding="utf-8")
+    assert main(shlex.split(calibrate)[1:]) == 0
+    assert "right before -> after" in capsys.readouterr().out
     assert main(shlex.split(study)[1:]) == 0
     assert "generated, selected" in capsys.readouterr().out
     assert read_hand_off(clone / "my_study").plan.beams.luminosity == 500
