@@ -1,12 +1,14 @@
 from __future__ import annotations
 
 import json
+from pathlib import Path
 
 import numpy as np
 import pytest
 
 from tests.study.numbers import leaves
 from toprecon.study import (
+    StudyPlan,
     result_mapping,
     result_text,
     run_study,
@@ -84,3 +86,26 @@ def test_the_sentence_gives_counts_and_asymmetries(result):
 def test_the_result_in_one_line(result):
     assert str(result).startswith("study: A_FB generated ")
     assert "\n" not in str(result)
+
+
+@pytest.mark.parametrize(
+    ("branch", "words"),
+    [
+        ("resolved", "Correct pairing in {} of the matched events"),
+        ("boosted", "All quarks inside the hadronic fat jet in {} of events"),
+        ("per event", "or all quarks inside the fat jet, in {} of the events matched"),
+    ],
+)
+def test_what_is_right_is_said_for_every_branch(branch, words):
+    sample = Path(__file__).parents[2] / "sample_events" / "lepjets_1500_LR.root"
+    loose = {
+        "study.branch": branch,
+        "selection.min_jets": 0,
+        "selection.btag_high": 0.0,
+        "selection.btag_low": 0.0,
+    }
+    result = run_study(str(sample), StudyPlan().with_settings(loose))
+    fraction = result.asymmetry.fraction_right
+    assert 0.2 < fraction.value < 0.98
+    words = words.format(fraction).replace("+-", "±")
+    assert words in sentence_of(result.beams)

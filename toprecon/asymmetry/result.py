@@ -271,10 +271,13 @@ class AsymmetryResult:
 
     @cached_property
     def fraction_right(self) -> Measured:
-        """Share of correct assignments among matched selected signal events."""
+        """Share of correct ones among selected signal events that can be correct.
+
+        Paired jets: matched events. Fat jets: all of them, those that leak included.
+        """
         w = self._first[:, UNIT]
         v = np.diagonal(self._covariance)[UNIT::N_COMPONENTS]
-        wrong = [PairingClass.B_SWAPPED, PairingClass.W_MIXED]
+        wrong = [PairingClass.B_SWAPPED, PairingClass.W_MIXED, PairingClass.LEAKING]
         right = PairingClass.CORRECT
         return fraction_from_counts(w[right], w[wrong].sum(), v[right], v[wrong].sum())
 

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 from toprecon.statistics import Measured
 
 if TYPE_CHECKING:
-    from toprecon.asymmetry import EstimatorOptions, EstimatorResult
+    from toprecon.asymmetry import AsymmetryResult, EstimatorOptions, EstimatorResult
     from toprecon.study.result import BeamsResult, StudyResult
 
 CLASS_NAMES = {
@@ -122,9 +122,22 @@ def sentence_of(beams: BeamsResult) -> str:
         f"({100 * flow.efficiency[-1]:.1f} %). A_FB generated "
         f"{a.generated_selected}, reconstructed {a.reconstructed}, "
         f"shift of the signal {a.shift}; generated, all events {a.generated}. "
-        f"{CLASS_NAMES['correct'].capitalize()} pairing in {a.fraction_right} of the "
-        "matched events."
+        f"{_right_words(a)}."
     ).replace("+-", "±")
+
+
+def _right_words(a: AsymmetryResult) -> str:
+    """Say what is right in which share of which events."""
+    leaking = "leaking" in a.by_class
+    paired = "b_swapped" in a.by_class or "w_mixed" in a.by_class
+    if leaking and paired:
+        return (
+            "Jets paired correctly, or all quarks inside the fat jet, in "
+            f"{a.fraction_right} of the events matched or with a fat jet"
+        )
+    if leaking:
+        return f"All quarks inside the hadronic fat jet in {a.fraction_right} of events"
+    return f"Correct pairing in {a.fraction_right} of the matched events"
 
 
 def _number(value: float) -> float | None:
@@ -260,12 +273,12 @@ def _beams_lines(
         f"{found.counting.extrapolated}, fit of the angular terms "
         f"{found.fit.extrapolated}, correlation {found.correlation:.2f}"
     )
-    f = a.flips
+    f, right = a.flips, _right_words(a)
     lines += [
         "",
         f"  flips: a = {f.forward_to_backward}, b = {f.backward_to_forward}",
         f"  slope 1-a-b = {f.slope}, offset b-a = {f.offset}",
-        f"  right among matched: {a.fraction_right}",
+        *_wrapped(right[0].lower() + right[1:]),
         "",
         f"  {'class':<18}{'share':>18}{'A_FB generated':>20}{'reconstructed':>20}",
     ]
