@@ -173,5 +173,7 @@ def test_pairing_is_calibrated_by_a_button(desk, expect):
     expect(desk.get_by_text("right after [%]")).to_be_visible(timeout=60_000)
     expect(desk.get_by_label("pairing -2 ln(right/wrong)")).to_be_visible()
     expect(desk.locator(".toprecon-error")).to_have_count(0)
-    desk.get_by_role("button", name="calibrate", exact=True).scroll_into_view_if_needed()
+    desk.get_by_role(
+        "button", name="calibrate", exact=True
+    ).scroll_into_view_if_needed()
     photograph(desk, "calibrated")

@@ -10,6 +10,7 @@ classes, ``AngleFigure`` and ``CutFigure``, keep their artists and follow a slid
 from __future__ import annotations
 
 from toprecon.figures.angle import AngleFigure, angle_figure, usual_variants
+from toprecon.figures.boosted import branch_figure, fat_jet_figure, tag_figure
 from toprecon.figures.budget import budget_figure
 from toprecon.figures.closure import closure_figure
 from toprecon.figures.comparison import comparison_figure
@@ -34,6 +35,7 @@ __all__ = [
     "EventView",
     "LiveFigure",
     "angle_figure",
+    "branch_figure",
     "budget_figure",
     "class_figure",
     "class_legend",
@@ -42,10 +44,12 @@ __all__ = [
     "cut_flow_figure",
     "distribution_figure",
     "event_figure",
+    "fat_jet_figure",
     "flip_figure",
     "matrix_figure",
     "png",
     "purity_figure",
     "scan_figure",
+    "tag_figure",
     "usual_variants",
 ]

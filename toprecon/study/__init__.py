@@ -28,6 +28,12 @@ from toprecon.events import (
 from toprecon.io import describe, load_layout, open_events, write_events
 from toprecon.migration import UnfoldingOptions
 from toprecon.selection import VariationOptions, vary
+from toprecon.study.branching import (
+    BranchComparison,
+    BranchRow,
+    branch_plan,
+    compare_branches,
+)
 from toprecon.study.calibrating import (
     CalibratedPlan,
     CalibrationQuality,
@@ -65,6 +71,7 @@ from toprecon.study.running import CHUNK_SIZE, run_study, summarise_chunk
 from toprecon.study.scanning import scan_cuts
 from toprecon.study.storing import content_checksum
 from toprecon.study.sums import StudySums, merge, summarise
+from toprecon.study.tagging import TagQuality, tag_quality
 from toprecon.study.varying import variation_shifts
 from toprecon.study.weights import SampleFactors, sample_factors
 
@@ -79,6 +86,8 @@ __all__ = [
     "Binning",
     "Branch",
     "BranchChoice",
+    "BranchComparison",
+    "BranchRow",
     "CalibratedPlan",
     "CalibrationQuality",
     "Channel",
@@ -105,15 +114,18 @@ __all__ = [
     "StudyPlan",
     "StudyResult",
     "StudySums",
+    "TagQuality",
     "UnfoldingOptions",
     "VariationOptions",
     "angle_linearity",
     "apply_cuts",
     "bias_meaning",
+    "branch_plan",
     "calibrate_plan",
     "check_references",
     "check_target",
     "closure_of",
+    "compare_branches",
     "compare_plans",
     "content_checksum",
     "coupling_dependence",
@@ -138,6 +150,7 @@ __all__ = [
     "sentence_of",
     "summarise",
     "summarise_chunk",
+    "tag_quality",
     "variation_shifts",
     "vary",
     "write_events",

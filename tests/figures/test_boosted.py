@@ -1,0 +1,97 @@
+"""Figures of fat jets, of the tag and of the branches."""
+
+from __future__ import annotations
+
+import dataclasses
+
+import numpy as np
+import pytest
+
+from toprecon.boosted import TagRates, roc
+from toprecon.figures import branch_figure, fat_jet_figure, png, tag_figure
+from toprecon.statistics import Measured
+
+
+@pytest.fixture
+def masses(rng):
+    """A narrow groomed peak, a wide plain one, W masses, some undefined."""
+    plain = np.append(rng.normal(185, 25, 2000), np.nan)
+    groomed = np.append(rng.normal(172, 8, 2000), np.nan)
+    w = np.append(rng.normal(80, 7, 2000), np.nan)
+    return {
+        "boosted.mass": plain.astype(np.float32),
+        "boosted.groomed_mass": groomed.astype(np.float32),
+        "boosted.w_mass": w.astype(np.float32),
+    }
+
+
+def legend_of(axes):
+    return [text.get_text() for text in axes.get_legend().get_texts()]
+
+
+def test_masses_are_drawn_with_median_and_core(masses):
+    figure = fat_jet_figure(masses, caption="simulated")
+    left, right = figure.axes
+    before, groomed = legend_of(left)
+    assert "median 185 GeV" in before
+    assert "median 172 GeV" in groomed
+    core = np.mean(np.abs(masses["boosted.groomed_mass"][:-1] - 172.5) < 15)
+    assert f"{100 * core:.0f} % within 15 GeV" in groomed
+    heights = [patch.get_data().values for patch in left.patches]
+    assert [h.sum() for h in heights] == pytest.approx([1, 1], abs=0.01)
+    assert right.patches[0].get_data().values.sum() == pytest.approx(1)
+    assert png(figure).startswith(b"\x89PNG")
+
+
+def test_weight_zero_leaves_a_fat_jet_out(masses):
+    weight = np.zeros(2001)
+    weight[7] = 2.0
+    figure = fat_jet_figure(masses, weight=weight)
+    middle = masses["boosted.groomed_mass"][7]
+    assert f"median {middle:.0f} GeV" in legend_of(figure.axes[0])[1]
+
+
+def test_tables_without_fat_jets_give_an_empty_figure():
+    nothing = np.full(3, np.nan)
+    names = ("mass", "groomed_mass", "w_mass")
+    figure = fat_jet_figure({f"boosted.{name}": nothing for name in names})
+    assert png(figure)
+
+
+def test_tag_shows_curve_and_cuts(rng):
+    curve = roc(rng.normal(1, 1, 500), rng.normal(-1, 1, 500))
+    figure = tag_figure(curve, TagRates(0.6, 0.02, 0.05, 0.01))
+    (axes,) = figure.axes
+    assert "60 % of tops" in legend_of(axes)[1]
+    assert f"area {curve.area:.3f}" in legend_of(axes)[0]
+    again = tag_figure(curve, figure=figure)
+    assert again is figure
+    assert len(legend_of(figure.axes[0])) == 1
+
+
+@dataclasses.dataclass(frozen=True)
+class Point:
+    branch: str
+    sqrt_s: float
+    helicity: str
+    efficiency: Measured
+    generated_selected: Measured
+    shift: Measured
+
+
+def test_branches_are_drawn_against_energy():
+    rows = [
+        Point(b, e, h, Measured(0.5, 0.01), Measured(0.4, 0.02), Measured(s, 0.01))
+        for b, s in (("resolved", -0.1), ("boosted", 0.02), ("wide", 0.0))
+        for e in (1000.0, 3000.0)
+        for h in ("LR", "RL")
+    ]
+    figure = branch_figure(rows)
+    left, right = figure.axes
+    assert len(legend_of(left)) == 6
+    assert "resolved, e-L e+R" in legend_of(left)
+    drawn = left.containers[0].lines[0].get_ydata()
+    assert list(drawn) == pytest.approx([-0.25, -0.25])
+    assert list(right.get_xticks()) == [1000, 3000]
+    one = branch_figure(rows[:1], figure=figure)
+    assert len(legend_of(one.axes[0])) == 1

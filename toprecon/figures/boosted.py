@@ -1,0 +1,289 @@
+"""Fat jets: what grooming does to the mass, the tag, and branches against energy."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from typing import Any, Protocol
+
+import numpy as np
+from matplotlib.figure import Figure
+from numpy.typing import ArrayLike, NDArray
+
+from toprecon.boosted import Roc, TagRates
+from toprecon.constants import TOP_MASS, W_MASS
+from toprecon.figures import style
+from toprecon.statistics import Measured
+
+FloatArray = NDArray[np.float64]
+
+MASS_RANGE = (0.0, 350.0)
+W_RANGE = (0.0, 160.0)
+CORE = 15.0
+"""Masses this near to the top mass are counted in the legend [GeV]."""
+NEAR_TOP = 25.0
+"""Groomed masses this near to the top mass enter the figure of the W candidate [GeV]."""
+
+BRANCHES = {
+    "resolved": {"color": style.BLUE, "marker": "o", "linestyle": "--"},
+    "boosted": {"color": style.ORANGE, "marker": "D", "linestyle": "-"},
+}
+OTHERS = (
+    {"color": style.GREEN, "marker": "s", "linestyle": "-."},
+    {"color": style.PURPLE, "marker": "^", "linestyle": ":"},
+)
+
+
+class BranchPoint(Protocol):
+    """What a branch gives for one sample, see :func:`branch_figure`."""
+
+    @property
+    def branch(self) -> str:
+        """Name of the branch."""
+
+    @property
+    def sqrt_s(self) -> float:
+        """Collision energy [GeV]."""
+
+    @property
+    def helicity(self) -> str:
+        """Helicity of the beams."""
+
+    @property
+    def efficiency(self) -> Measured:
+        """Share of the signal selected."""
+
+    @property
+    def generated_selected(self) -> Measured:
+        """Generated A_FB of the events selected."""
+
+    @property
+    def shift(self) -> Measured:
+        """Reconstructed minus generated of the same events."""
+
+
+def fat_jet_figure(
+    table: Mapping[str, ArrayLike],
+    *,
+    weight: ArrayLike | None = None,
+    caption: str = "",
+    figure: Figure | None = None,
+) -> Figure:
+    """Draw the mass of the hadronic fat jet before and after grooming, and the W in it.
+
+    Parameters
+    ----------
+    table : mapping of array, shape (F,)
+        ``boosted.mass``, ``boosted.groomed_mass`` and ``boosted.w_mass`` [GeV], such
+        as an event table; undefined values are left out.
+    weight : array, shape (F,), optional
+        Weights; 0 leaves a fat jet out.
+    caption : str
+        Small print: what the numbers rest on.
+    figure : Figure, optional
+        Figure to draw into again.
+
+    Returns
+    -------
+    Figure
+        Left: both masses, with median and the share near the top mass. Right: mass of the W candidate where the groomed mass is near the top's.
+    """
+    plain, groomed, w = (
+        np.asarray(table[f"boosted.{name}"], dtype=np.float64)
+        for name in ("mass", "groomed_mass", "w_mass")
+    )
+    weights = np.ones(len(plain)) if weight is None else np.asarray(weight, float)
+    figure = style.blank(figure, (7.2, 3.0))
+    left = figure.add_axes((0.09, 0.21, 0.49, 0.6))
+    right = figure.add_axes((0.68, 0.21, 0.3, 0.6))
+    near = np.abs(groomed - TOP_MASS) < NEAR_TOP
+    for label, values, look in (
+        ("before grooming", plain, style.SIGNAL_ONLY),
+        ("groomed", groomed, style.RECONSTRUCTED),
+    ):
+        middle, near_top = _median_and_core(values, weights)
+        said = (
+            f"{label}: median {middle:.0f} GeV, {100 * near_top:.0f} % within "
+            f"{CORE:g} GeV of the top"
+        )
+        _steps(left, values, weights, MASS_RANGE, 70, label=said, **look)
+    _steps(right, w[near], weights[near], W_RANGE, 40, **style.RECONSTRUCTED)
+    for axes, mass, name in ((left, TOP_MASS, "top"), (right, W_MASS, "W")):
+        axes.axvline(mass, color=style.FAINT, linewidth=1, linestyle=":")
+        axes.set_ylim(bottom=0)
+        axes.annotate(
+            name, (mass, 1), (3, -2), xycoords=("data", "axes fraction"),
+            textcoords="offset points", va="top", fontsize=8, color=style.FAINT,
+        )  # fmt: skip
+        style.tidy(axes)
+    left.set(xlabel="mass of the hadronic fat jet [GeV]", ylabel="share per 5 GeV")
+    right.set(xlabel="mass of the W candidate [GeV]", ylabel="share per 4 GeV")
+    left.legend(
+        loc="lower left", bbox_to_anchor=(-0.03, 1.0), frameon=False, fontsize=8.5,
+        labelcolor=style.INK, borderaxespad=0.1,
+    )  # fmt: skip
+    right.set_title(
+        f"groomed mass within {NEAR_TOP:g} GeV\nof the top", loc="left", fontsize=8.5,
+        color=style.INK,
+    )  # fmt: skip
+    style.small_print(figure, caption)
+    return figure
+
+
+def tag_figure(
+    curve: Roc,
+    cuts: TagRates | None = None,
+    *,
+    caption: str = "",
+    figure: Figure | None = None,
+) -> Figure:
+    """Draw the mistag rate of a tag against its efficiency.
+
+    Parameters
+    ----------
+    curve : Roc
+        Of the likelihood ratio.
+    cuts : TagRates, optional
+        Those of the cuts, marked with their errors.
+    caption : str
+        Small print: what the numbers rest on.
+    figure : Figure, optional
+        Figure to draw into again.
+
+    Returns
+    -------
+    Figure
+        Logarithmic in the mistag rate; the lower, the better.
+    """
+    figure = style.blank(figure, (7.2, 3.0))
+    axes = figure.add_axes((0.11, 0.21, 0.55, 0.72))
+    seen = curve.mistag > 0
+    axes.plot(
+        curve.efficiency[seen], curve.mistag[seen], drawstyle="steps-post",
+        label=f"likelihood ratio\n(area {curve.area:.3f})", **style.RECONSTRUCTED,
+    )  # fmt: skip
+    if cuts is not None and cuts.mistag > 0:
+        axes.errorbar(
+            cuts.efficiency, cuts.mistag, xerr=cuts.efficiency_error,
+            yerr=cuts.mistag_error, fmt="o", color=style.INK, markersize=5,
+            label=f"cuts: {100 * cuts.efficiency:.0f} % of tops,\n"
+            f"{100 * cuts.mistag:.1f} % of others",
+        )  # fmt: skip
+    axes.set_yscale("log")
+    lowest = curve.mistag[seen].min() if seen.any() else 1e-3
+    axes.set(xlim=(0, 1), ylim=(0.7 * lowest, 1.2))
+    axes.set(xlabel="share of tops tagged", ylabel="share of other fat jets tagged")
+    style.tidy(axes)
+    axes.legend(
+        loc="upper left", bbox_to_anchor=(1.03, 1.03), frameon=False, fontsize=9,
+        labelcolor=style.INK, labelspacing=0.9,
+    )  # fmt: skip
+    style.small_print(figure, caption)
+    return figure
+
+
+def branch_figure(
+    rows: Sequence[BranchPoint], *, caption: str = "", figure: Figure | None = None
+) -> Figure:
+    """Draw what the branches give against the collision energy.
+
+    Parameters
+    ----------
+    rows : sequence
+        One per branch and sample, such as ``compare_branches(...).rows``.
+    caption : str
+        Small print: what the numbers rest on.
+    figure : Figure, optional
+        Figure to draw into again.
+
+    Returns
+    -------
+    Figure
+        Left: shift of A_FB by the reconstruction over the generated value of the same
+        events. Right: efficiency. Filled: e-L e+R; open: e-R e+L and mixed beams.
+    """
+    figure = style.blank(figure, (7.2, 3.0))
+    left = figure.add_axes((0.11, 0.21, 0.36, 0.64))
+    right = figure.add_axes((0.6, 0.21, 0.36, 0.64))
+    names = list(dict.fromkeys(row.branch for row in rows))
+    energies = sorted({row.sqrt_s for row in rows})
+    spacing = 0.02 * (energies[-1] - energies[0]) or 0.02 * energies[0]
+    others = iter(OTHERS * len(names))
+    looks: dict[str, dict[str, Any]] = {
+        name: dict(BRANCHES[name] if name in BRANCHES else next(others))
+        for name in names
+    }
+    series = list(dict.fromkeys((row.branch, row.helicity) for row in rows))
+    for place, (name, helicity) in enumerate(series):
+        mine = sorted(
+            (r for r in rows if (r.branch, r.helicity) == (name, helicity)),
+            key=lambda r: r.sqrt_s,
+        )
+        look = {
+            **looks[name],
+            "mfc": looks[name]["color"] if helicity == "LR" else style.PAPER,
+            "markersize": 5.5,
+            "linewidth": 1.2,
+            "label": f"{name}, {_BEAMS.get(helicity, helicity)}",
+        }
+        x = [r.sqrt_s + (place - 0.5 * (len(series) - 1)) * spacing for r in mine]
+        scale = [r.generated_selected.value or math.nan for r in mine]
+        left.errorbar(
+            x,
+            [r.shift.value / s for r, s in zip(mine, scale, strict=True)],
+            yerr=[r.shift.error / abs(s) for r, s in zip(mine, scale, strict=True)],
+            **look,
+        )
+        right.errorbar(
+            x,
+            [r.efficiency.value for r in mine],
+            yerr=[r.efficiency.error for r in mine],
+            **look,
+        )
+    left.axhline(0, color=style.INK, linewidth=0.8)
+    left.set_ylabel(f"relative shift of {style.A_FB}")
+    right.set(ylabel="share of the signal selected", ylim=(0, 1))
+    for axes in (left, right):
+        axes.set_xlabel("collision energy [GeV]")
+        axes.set_xticks(energies)
+        axes.set_xlim(
+            energies[0] - 3 * len(series) * spacing,
+            energies[-1] + 3 * len(series) * spacing,
+        )
+        style.tidy(axes)
+    left.legend(
+        *left.get_legend_handles_labels(), loc="lower left",
+        bbox_to_anchor=(-0.05, 1.0), ncols=4, frameon=False, fontsize=8.5,
+        labelcolor=style.INK, columnspacing=1.2,
+    )  # fmt: skip
+    style.small_print(figure, caption)
+    return figure
+
+
+_BEAMS = {"LR": "e-L e+R", "RL": "e-R e+L"}
+
+
+def _median_and_core(values: FloatArray, weight: FloatArray) -> tuple[float, float]:
+    """Weighted median, and share near the top mass."""
+    keep = np.isfinite(values) & (weight > 0)
+    if not keep.any():
+        return math.nan, math.nan
+    x, w = values[keep], weight[keep]
+    middle = np.quantile(x, 0.5, weights=w, method="inverted_cdf")
+    return float(middle), float(w[np.abs(x - TOP_MASS) < CORE].sum() / w.sum())
+
+
+def _steps(
+    axes: Any,
+    values: FloatArray,
+    weight: FloatArray,
+    interval: tuple[float, float],
+    n: int,
+    **look: Any,
+) -> None:
+    """Draw a histogram as shares of everything defined, also of what lies outside."""
+    keep = np.isfinite(values)
+    counts, edges = np.histogram(values[keep], n, interval, weights=weight[keep])
+    total = weight[keep].sum()
+    axes.stairs(counts / total if total else counts, edges, **look)
+    axes.set_xlim(*interval)

@@ -1,0 +1,268 @@
+"""Paired jets or fat jets: both branches on the same events, energy by energy."""
+
+from __future__ import annotations
+
+import dataclasses
+from collections.abc import Mapping
+from typing import Any
+
+import awkward as ak
+import numpy as np
+
+from toprecon.errors import StudyError
+from toprecon.events import Channel, EventTable
+from toprecon.io import EventSource, open_events
+from toprecon.statistics import Measured
+from toprecon.study.chunks import reconstruct_source
+from toprecon.study.plan import BranchChoice, CutOptions, StudyPlan
+from toprecon.study.reconstruction import reconstruct
+from toprecon.study.result import finish
+from toprecon.study.sums import summarise
+
+_QUANTITIES = (
+    "efficiency",
+    "generated",
+    "generated_selected",
+    "reconstructed",
+    "shift",
+    "acceptance_shift",
+    "fraction_right",
+    "slope",
+)
+
+
+@dataclasses.dataclass(frozen=True)
+class BranchRow:
+    """One branch on the signal events of one sample.
+
+    Parameters
+    ----------
+    branch : str
+        Name of the plan, such as ``resolved``.
+    sample : str
+        Name of the sample.
+    sqrt_s : float
+        Collision energy [GeV].
+    helicity : str
+        Of the beams.
+    events : int
+        Entries of the sample.
+    efficiency : Measured
+        Selected over all signal in the truth phase space.
+    generated, generated_selected, reconstructed : Measured
+        A_FB of the signal: generated angle of all and of the selected events,
+        reconstructed angle of the selected ones.
+    shift, acceptance_shift : Measured
+        Reconstructed minus generated of the same events (paired error); selected minus
+        all, generated angle.
+    fraction_right : Measured
+        Resolved: right pairings of the matched events selected. Boosted: selected
+        events with all quarks inside the hadronic fat jet.
+    slope : Measured
+        1 - a - b of the flips of the hemisphere.
+    """
+
+    branch: str
+    sample: str
+    sqrt_s: float
+    helicity: str
+    events: int
+    efficiency: Measured
+    generated: Measured
+    generated_selected: Measured
+    reconstructed: Measured
+    shift: Measured
+    acceptance_shift: Measured
+    fraction_right: Measured
+    slope: Measured
+
+
+@dataclasses.dataclass(frozen=True)
+class BranchComparison:
+    """Branches on the same events.
+
+    Parameters
+    ----------
+    rows : tuple of BranchRow
+        By energy, sample, then branch.
+    plans : dict of StudyPlan
+        What each branch was reconstructed with.
+    """
+
+    rows: tuple[BranchRow, ...]
+    plans: dict[str, StudyPlan]
+
+    def __getitem__(self, key: tuple[str, str]) -> BranchRow:
+        """Return the row of (branch, sample)."""
+        for row in self.rows:
+            if (row.branch, row.sample) == key:
+                return row
+        raise KeyError(key)
+
+    @property
+    def samples(self) -> tuple[str, ...]:
+        """Names of the samples, by energy."""
+        return tuple(dict.fromkeys(row.sample for row in self.rows))
+
+    def to_mapping(self) -> list[dict[str, Any]]:
+        """Return the rows as plain data."""
+        return [
+            {
+                **{n: getattr(row, n) for n in ("branch", "sample", "sqrt_s")},
+                "helicity": row.helicity,
+                "events": row.events,
+                **{n: getattr(row, n).to_mapping() for n in _QUANTITIES},
+            }
+            for row in self.rows
+        ]
+
+    def __str__(self) -> str:
+        titles = ("efficiency", "A_FB gen. selected", "reco. - gen.", "right")
+        lines = [
+            f"{'sample':20} {'branch':10}" + "".join(f"{t:>20}" for t in titles),
+        ]
+        lines += [
+            f"{r.sample:20} {r.branch:10}"
+            + "".join(
+                f"{value!s:>20}"
+                for value in (
+                    r.efficiency,
+                    r.generated_selected,
+                    r.shift,
+                    r.fraction_right,
+                )
+            )
+            for r in self.rows
+        ]
+        lines.append(
+            "right: resolved, pairings of the matched events; boosted, events with all "
+            "quarks in the fat jet"
+        )
+        return "\n".join(lines)
+
+
+def branch_plan(plan: StudyPlan, branch: str) -> StudyPlan:
+    """Return a plan for one branch, with the cuts that have a meaning in it.
+
+    Parameters
+    ----------
+    plan : StudyPlan
+        Any plan.
+    branch : str
+        ``"resolved"`` or ``"boosted"``.
+
+    Returns
+    -------
+    StudyPlan
+        Resolved: cuts on fat jets are dropped. Boosted: cuts on the pairing and the
+        fit, and what the selection asks of single jets, are dropped; where no cut on a
+        fat jet is on, every hadronic top must be tagged.
+    """
+    choice = BranchChoice(branch)
+    plan = plan.with_settings({"study.branch": choice.value})
+    if choice is BranchChoice.RESOLVED:
+        return plan.replace(cuts=_without(plan.cuts, ("boosted.",)))
+    plan = plan.with_settings(
+        {
+            "selection.min_jets": 0,
+            "selection.btag_high": 0.0,
+            "selection.btag_low": 0.0,
+        }
+    ).replace(cuts=_without(plan.cuts, ("pairing.", "fit.")))
+    if any(cut.observable.startswith("boosted.") for cut in plan.active_cuts):
+        return plan
+    tagged = 2 if plan.study.channel is Channel.ALL_HADRONIC else 1
+    return plan.with_cut("boosted.n_tagged", low=tagged)
+
+
+def compare_branches(
+    source: Any,
+    plan: StudyPlan,
+    *,
+    plans: Mapping[str, StudyPlan] | None = None,
+    layout: Any = None,
+    catalogue: Any = None,
+) -> BranchComparison:
+    """Reconstruct the same events by paired jets and by fat jets.
+
+    Parameters
+    ----------
+    source : EventSource, events, path or list of paths
+        Top pairs with truth and particles, of one or several energies.
+    plan : StudyPlan
+        What both branches share, see :func:`branch_plan`.
+    plans : mapping of StudyPlan, optional
+        Plans by name, instead of ``resolved`` and ``boosted`` made from ``plan``.
+    layout, catalogue : optional
+        How to read files, see :func:`toprecon.open_events`.
+
+    Returns
+    -------
+    BranchComparison
+        One row per sample and branch; samples without signal are left out.
+
+    Raises
+    ------
+    StudyError
+        If there is no top-pair sample.
+    """
+    if not isinstance(source, (EventSource, ak.Array)):
+        source = open_events(source, layout=layout, catalogue=catalogue)
+    both = ("resolved", "boosted")
+    used = dict(plans) if plans else {n: branch_plan(plan, n) for n in both}
+    rows = []
+    for name, one in used.items():
+        table = (
+            reconstruct(source, one)
+            if isinstance(source, ak.Array)
+            else reconstruct_source(source, one)
+        )
+        rows += [
+            _row(name, part, one)
+            for part in _by_sample(table)
+            if part.samples[0].is_signal_process and len(part)
+        ]
+    if not rows:
+        msg = "branches: at least one sample of top pairs is required; got none"
+        raise StudyError(msg)
+    order = {sample: k for k, sample in enumerate(r.sample for r in rows)}
+    rows.sort(key=lambda r: (r.sqrt_s, order[r.sample]))
+    return BranchComparison(tuple(rows), used)
+
+
+def _by_sample(table: EventTable) -> list[EventTable]:
+    """Return a table with all its observables for every sample."""
+    parts = []
+    for number, sample in enumerate(table.samples):
+        part = table.take(np.flatnonzero(table["sample"] == number))
+        columns = {**part.columns, "sample": np.zeros(len(part), dtype=np.int16)}
+        parts.append(dataclasses.replace(part, columns=columns, samples=(sample,)))
+    return parts
+
+
+def _row(name: str, table: EventTable, plan: StudyPlan) -> BranchRow:
+    """Study one sample."""
+    (sample,) = table.samples
+    a = finish(summarise(table, plan), plan).asymmetry
+    return BranchRow(
+        branch=name,
+        sample=sample.name,
+        sqrt_s=float(sample.sqrt_s),
+        helicity=sample.helicity.name,
+        events=len(table),
+        efficiency=a.efficiency,
+        generated=a.generated,
+        generated_selected=a.generated_selected,
+        reconstructed=a.reconstructed_signal,
+        shift=a.shift,
+        acceptance_shift=a.acceptance_shift,
+        fraction_right=a.fraction_right,
+        slope=a.flips.slope,
+    )
+
+
+def _without(
+    cuts: tuple[CutOptions, ...], starts: tuple[str, ...]
+) -> tuple[CutOptions, ...]:
+    """Return the cuts on other observables."""
+    return tuple(cut for cut in cuts if not cut.observable.startswith(starts))
