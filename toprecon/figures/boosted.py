@@ -12,6 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from toprecon.boosted import Roc, TagRates
 from toprecon.constants import TOP_MASS, W_MASS
+from toprecon.events import EventTable
 from toprecon.figures import style
 from toprecon.statistics import Measured
 
@@ -63,7 +64,7 @@ class BranchPoint(Protocol):
 
 
 def fat_jet_figure(
-    table: Mapping[str, ArrayLike],
+    table: EventTable | Mapping[str, ArrayLike],
     *,
     weight: ArrayLike | None = None,
     caption: str = "",
@@ -73,9 +74,9 @@ def fat_jet_figure(
 
     Parameters
     ----------
-    table : mapping of array, shape (F,)
-        ``boosted.mass``, ``boosted.groomed_mass`` and ``boosted.w_mass`` [GeV], such
-        as an event table; undefined values are left out.
+    table : EventTable or mapping of array, shape (F,)
+        With ``boosted.mass``, ``boosted.groomed_mass`` and ``boosted.w_mass`` [GeV];
+        undefined values are left out.
     weight : array, shape (F,), optional
         Weights; 0 leaves a fat jet out.
     caption : str

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import Any
 
 import awkward as ak
@@ -13,11 +13,13 @@ from toprecon.errors import StudyError
 from toprecon.events import Channel, EventTable
 from toprecon.io import EventSource, open_events
 from toprecon.statistics import Measured
-from toprecon.study.chunks import reconstruct_source
 from toprecon.study.plan import BranchChoice, CutOptions, StudyPlan
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.result import finish
 from toprecon.study.sums import summarise
+
+CHUNK = 20_000
+"""Events with particles read at a time."""
 
 _QUANTITIES = (
     "efficiency",
@@ -182,6 +184,7 @@ def compare_branches(
     plans: Mapping[str, StudyPlan] | None = None,
     layout: Any = None,
     catalogue: Any = None,
+    progress: Callable[[int, int], Any] | None = None,
 ) -> BranchComparison:
     """Reconstruct the same events by paired jets and by fat jets.
 
@@ -195,6 +198,8 @@ def compare_branches(
         Plans by name, instead of ``resolved`` and ``boosted`` made from ``plan``.
     layout, catalogue : optional
         How to read files, see :func:`toprecon.open_events`.
+    progress : callable, optional
+        Called with (chunks done, chunks in all).
 
     Returns
     -------
@@ -210,16 +215,21 @@ def compare_branches(
         source = open_events(source, layout=layout, catalogue=catalogue)
     both = ("resolved", "boosted")
     used = dict(plans) if plans else {n: branch_plan(plan, n) for n in both}
+    parts: dict[str, list[EventTable]] = {name: [] for name in used}
+    n_chunks = 1 if isinstance(source, ak.Array) else len(source.references(CHUNK))
+    chunks = [source] if isinstance(source, ak.Array) else source.chunks(CHUNK)
+    done = 0
+    for events in chunks:
+        for name, one in used.items():
+            parts[name].append(reconstruct(events, one))
+            done += 1
+            if progress is not None:
+                progress(done, n_chunks * len(used))
     rows = []
     for name, one in used.items():
-        table = (
-            reconstruct(source, one)
-            if isinstance(source, ak.Array)
-            else reconstruct_source(source, one)
-        )
         rows += [
             _row(name, part, one)
-            for part in _by_sample(table)
+            for part in _by_sample(EventTable.concatenate(parts[name]))
             if part.samples[0].is_signal_process and len(part)
         ]
     if not rows:

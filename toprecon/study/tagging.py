@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+from collections.abc import Callable
 from typing import Any
 
 import awkward as ak
@@ -29,6 +30,9 @@ from toprecon.study.plan import StudyPlan
 
 FloatArray = NDArray[np.float64]
 FatJets = dict[str, FloatArray]
+
+CHUNK = 20_000
+"""Events with particles read at a time."""
 
 N_BINS = 8
 """Bins per observable of the likelihood ratio."""
@@ -76,6 +80,7 @@ def tag_quality(
     *,
     layout: Any = None,
     catalogue: Any = None,
+    progress: Callable[[int, int], Any] | None = None,
 ) -> TagQuality:
     """Measure the tag of a plan, and calibrate a likelihood ratio beside it.
 
@@ -88,6 +93,8 @@ def tag_quality(
         Others: both fat jets of every event of another process.
     layout, catalogue : optional
         How to read files, see :func:`toprecon.open_events`.
+    progress : callable, optional
+        Called with (chunks done, chunks in all).
 
     Returns
     -------
@@ -106,9 +113,10 @@ def tag_quality(
     """
     if not isinstance(source, (EventSource, ak.Array)):
         source = open_events(source, layout=layout, catalogue=catalogue)
-    chunks = [source] if isinstance(source, ak.Array) else source.chunks(20_000)
+    n_chunks = 1 if isinstance(source, ak.Array) else len(source.references(CHUNK))
+    chunks = [source] if isinstance(source, ak.Array) else source.chunks(CHUNK)
     parts: tuple[list[FatJets], list[FatJets]] = ([], [])
-    for events in chunks:
+    for done, events in enumerate(chunks, 1):
         is_top = is_signal_process(events)
         channels = (plan.study.channel, Channel.ALL_HADRONIC)
         for found, keep, channel in zip(
@@ -116,6 +124,8 @@ def tag_quality(
         ):
             if keep.any():
                 found.append(_fat_jets(events[keep], plan, channel))
+        if progress is not None:
+            progress(done, n_chunks)
     tops, others = _joined(parts[0]), _joined(parts[1])
     for name, kind in (("top pairs", tops), ("another process", others)):
         if not kind or not len(kind["half_a"]):

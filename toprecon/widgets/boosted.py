@@ -2,18 +2,31 @@
 
 from __future__ import annotations
 
+import html
+from collections.abc import Callable
 from typing import Any
 
 import ipywidgets
 
 from toprecon import figures
-from toprecon.study import OBSERVABLES, Binning, BranchChoice
+from toprecon.study import (
+    OBSERVABLES,
+    Binning,
+    BranchChoice,
+    BranchComparison,
+    TagQuality,
+    branch_plan,
+    compare_branches,
+    tag_quality,
+)
 from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import OptionControls
 from toprecon.widgets.parts import Picture, helping, labelled
 
 BINS = 60
 OWN = [item for item in OBSERVABLES if item.name.startswith("boosted.")]
+MASSES, OBSERVABLE, BRANCHES, TAG = "masses", "observable", "branches", "tag"
+SECTIONS = ("Fat jets", "Tag", "Grooming and substructure")
 
 
 class BoostedPanel(Panel):
@@ -33,7 +46,18 @@ class BoostedPanel(Panel):
             layout=ipywidgets.Layout(width="16em"),
         )
         self.branch.observe(lambda event: self._choose(event["new"]), names="value")
+        self.take = ipywidgets.Button(
+            description="fat jets with a tag",
+            tooltip="boosted branch, nothing asked of single jets, every top tagged",
+            layout=ipywidgets.Layout(width="12em"),
+        )
+        self.take.on_click(lambda _: self._take())
         self._quiet = False
+        self.view = ipywidgets.ToggleButtons(
+            options=[MASSES, OBSERVABLE, BRANCHES, TAG],
+            value=MASSES,
+            style={"button_width": "9em"},
+        )
         self.observable = ipywidgets.Dropdown(
             description="show",
             options=[(item.axis_label, item) for item in OWN],
@@ -41,9 +65,14 @@ class BoostedPanel(Panel):
             style={"description_width": "4em"},
             layout=ipywidgets.Layout(width="24em"),
         )
-        self.observable.observe(lambda _: self.redraw(), names="value")
+        for item in (self.view, self.observable):
+            item.observe(lambda _: self.redraw(), names="value")
         self.picture = Picture()
         self.text = ipywidgets.HTML()
+        self.start = ipywidgets.Button(layout=ipywidgets.Layout(width="20em"))
+        self.start.on_click(lambda _: self._start())
+        self._branches: BranchComparison | None = None
+        self._quality: TagQuality | None = None
         self.settings = OptionControls(self, plan.boosted, "boosted")
         self.tag = OptionControls(self, plan.boosted.tag, "boosted.tag")
         self.grooming = OptionControls(
@@ -53,26 +82,30 @@ class BoostedPanel(Panel):
         if not self.live.can_reconstruct:
             for controls in (self.settings, self.tag, self.grooming):
                 controls.disable()
-            self.branch.disabled = True
+            for item in (self.branch, self.take, self.start):
+                item.disabled = True
             note = [
                 helping("fixed: the study runs on a saved event table, without events")
             ]
+        self.sections = ipywidgets.Accordion(
+            children=[self.settings.widget, self.tag.widget, self.grooming.widget],
+            titles=SECTIONS,
+        )
         return [
-            ipywidgets.HBox([self.branch, self.observable]),
+            ipywidgets.HBox([self.branch, self.take]),
+            self.view,
+            self.observable,
+            self.start,
             self.text,
             self.picture.widget,
+            labelled("Settings"),
             *note,
-            labelled("Fat jets"),
-            self.settings.widget,
-            labelled("Tag"),
-            self.tag.widget,
-            labelled("Grooming and substructure"),
-            self.grooming.widget,
+            self.sections,
         ]
 
     def paint(self) -> None:
-        """Draw the observable chosen, by class."""
-        plan = self.live.plan
+        """Draw the view chosen."""
+        plan, view = self.live.plan, self.view.value
         self.settings.follow(plan.boosted)
         self.tag.follow(plan.boosted.tag)
         self.grooming.follow(plan.boosted.substructure)
@@ -80,25 +113,60 @@ class BoostedPanel(Panel):
             self._quiet = True
             self.branch.value = plan.study.branch
             self._quiet = False
-        observable = self.observable.value
-        there = observable.name in self.live.table
-        self.picture.widget.layout.display = None if there else "none"
-        text = "" if there else "Choose a branch with fat jets to see them here."
-        self.text.value = f'<p class="toprecon-status">{text}</p>' if text else ""
+        _show(self.observable, view == OBSERVABLE)
+        _show(self.start, view in {BRANCHES, TAG})
+        if view in {BRANCHES, TAG}:
+            self._paint_work(view)
+            return
+        name = self.observable.value.name if view == OBSERVABLE else "boosted.mass"
+        there = name in self.live.table
+        _show(self.picture.widget, there)
+        self._say("" if there else "Choose a branch with fat jets to see them here.")
         if not there or not self.live.is_settled:
             return
+        if view == MASSES:
+            table, selected = self.live.table, self.live.selected()
+            self.picture.draw(
+                view,
+                lambda figure: figures.fat_jet_figure(
+                    table,
+                    weight=table["weight"] * selected,
+                    caption=self.shared.caption,
+                    figure=figure,
+                ),
+            )
+            return
+        observable = self.observable.value
         binning = Binning.regular(BINS, *observable.range)
         classes = self.live.distribution(
             observable.name, binning, beams=self.shared.beams.value
         )
         limits = {cut.observable: (cut.low, cut.high) for cut in plan.active_cuts}
         low, high = limits.get(observable.name, (None, None))
-        figure = figures.CutFigure(observable, binning, caption=self.shared.caption)
-        figure.update(classes, low=low, high=high)
-        self.picture.show(figure)
+        cut_figure = figures.CutFigure(observable, binning, caption=self.shared.caption)
+        cut_figure.update(classes, low=low, high=high)
+        self.picture.show(cut_figure)
 
     def python(self) -> str:
         """Return Python that gives what is shown."""
+        view = self.view.value
+        if view == BRANCHES:
+            return (
+                "from toprecon.study import compare_branches\n\n"
+                "print(compare_branches(source, plan))"
+            )
+        if view == TAG:
+            return (
+                "from toprecon.study import tag_quality\n\n"
+                "print(tag_quality(source, plan))"
+            )
+        if view == MASSES:
+            return (
+                "from toprecon import open_events, reconstruct\n"
+                "from toprecon.figures import fat_jet_figure\n\n"
+                "table = reconstruct(open_events(source).read(), plan)\n"
+                "fat_jet_figure(table)  # boosted.mass, boosted.groomed_mass"
+            )
         observable = self.observable.value
         low, high = observable.range
         return (
@@ -108,8 +176,91 @@ class BoostedPanel(Panel):
             f'live.distribution("{observable.name}", bins)'
         )
 
+    def _paint_work(self, view: str) -> None:
+        """Show the outcome of long work, or say how to start it."""
+        found = self._branches if view == BRANCHES else self._quality
+        words = "compare the branches" if view == BRANCHES else "measure the tag"
+        self.start.description = words
+        _show(self.picture.widget, found is not None)
+        caption = self.shared.caption
+        if isinstance(found, BranchComparison):
+            rows = found.rows
+            self._say(
+                "Both branches on the same events, with the present settings then."
+            )
+            self.picture.draw(
+                view,
+                lambda figure: figures.branch_figure(
+                    rows, caption=caption, figure=figure
+                ),
+            )
+        elif isinstance(found, TagQuality):
+            curve, cuts = found.curve, found.cuts
+            self._say(str(found).replace("+-", "±"))
+            self.picture.draw(
+                view,
+                lambda figure: figures.tag_figure(
+                    curve, cuts, caption=caption, figure=figure
+                ),
+            )
+        elif view == BRANCHES:
+            self._say(
+                "Reconstructs all events twice: pairs of jets without the cuts on fat "
+                "jets, and tagged fat jets."
+            )
+        else:
+            self._say(
+                "Fat jets of the top pairs against those of the other samples: give the "
+                "study a background with particles as well."
+            )
+
+    def _say(self, text: str) -> None:
+        self.text.value = (
+            f'<p class="toprecon-status">{html.escape(text)}</p>' if text else ""
+        )
+
+    def _start(self) -> None:
+        """Do what the view shows, in the worker."""
+        source, plan = self.live.source, self.live.plan
+        if self.view.value == BRANCHES:
+            self._run(
+                "comparing the branches",
+                lambda report: compare_branches(source, plan, progress=report),
+                "_branches",
+            )
+        else:
+            self._run(
+                "measuring the tag",
+                lambda report: tag_quality(source, plan, progress=report),
+                "_quality",
+            )
+
+    def _run(self, doing: str, work: Callable[[Any], Any], place: str) -> None:
+        self.start.disabled = True
+
+        def then(found: Any) -> None:
+            self.start.disabled = False
+            setattr(self, place, found)
+            self.redraw()
+
+        def failed(error: Exception) -> None:
+            self.start.disabled = False
+            self.errors.show_error(error)
+
+        with self.errors.guard():
+            self.live.run(doing, work, then, failed=failed)
+
+    def _take(self) -> None:
+        with self.errors.guard():
+            self.live.set_plan(branch_plan(self.live.plan, BranchChoice.BOOSTED.value))
+
     def _choose(self, branch: BranchChoice) -> None:
         if self._quiet:
             return
         with self.errors.guard():
             self.live.set_settings({"study.branch": branch.value})
+
+
+def _show(widget: Any, visible: bool) -> None:
+    """Show or hide a widget."""
+    widget.layout.display = None if visible else "none"

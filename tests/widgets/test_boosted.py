@@ -1,0 +1,71 @@
+"""The boosted panel: masses, branches and the tag."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+
+from toprecon.study import StudyPlan
+from toprecon.widgets.boosted import BoostedPanel
+
+SAMPLES = Path(__file__).parents[2] / "sample_events"
+SIGNAL = [str(SAMPLES / f"lepjets_1500_{h}.root") for h in ("LR", "RL")]
+
+
+@pytest.fixture
+def panel():
+    files = [*SIGNAL, str(SAMPLES / "qq_1500.root")]
+    panel = BoostedPanel(files, StudyPlan(), synchronous=True)
+    yield panel
+    assert panel.errors.text == ""
+    panel.close()
+
+
+def test_one_button_takes_tagged_fat_jets_into_the_plan(panel):
+    assert "Choose a branch with fat jets" in panel.text.value
+    assert panel.picture.widget.layout.display == "none"
+    panel.take.click()
+    assert panel.live.plan.study.branch.value == "boosted"
+    (cut,) = panel.live.plan.active_cuts
+    assert cut.observable == "boosted.n_tagged"
+    assert panel.branch.value.value == "boosted"
+    assert panel.text.value == ""
+    assert panel.picture.widget.layout.display is None
+    masses = panel.picture.widget.value
+    panel.view.value = "observable"
+    assert panel.picture.widget.value != masses
+    assert "inside the hadronic fat jet" in panel.shared.status.value
+
+
+@pytest.mark.parametrize(
+    ("view", "button", "words", "code"),
+    [
+        (
+            "branches",
+            "compare the branches",
+            "Both branches",
+            "compare_branches(source",
+        ),
+        ("tag", "measure the tag", "of the others", "tag_quality(source"),
+    ],
+)
+def test_long_work_is_started_by_its_button(panel, view, button, words, code):
+    panel.view.value = view
+    assert panel.start.description == button
+    assert panel.picture.widget.layout.display == "none"
+    panel.start.click()
+    assert not panel.start.disabled
+    assert words in panel.text.value
+    assert panel.picture.widget.layout.display is None
+    assert bytes(panel.picture.widget.value[:4]) == b"\x89PNG"
+    assert code in panel.python()
+
+
+def test_tag_without_a_background_is_one_sentence():
+    panel = BoostedPanel(SIGNAL, StudyPlan(), synchronous=True)
+    panel.view.value = "tag"
+    panel.start.click()
+    assert "none of another process" in panel.errors.text
+    assert not panel.start.disabled
+    panel.close()
