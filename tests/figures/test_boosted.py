@@ -95,3 +95,8 @@ def test_branches_are_drawn_against_energy():
     assert list(right.get_xticks()) == [1000, 3000]
     one = branch_figure(rows[:1], figure=figure)
     assert len(legend_of(one.axes[0])) == 1
+
+
+def test_figures_show_themselves_in_a_notebook(masses):
+    formatter = pytest.importorskip("IPython.core.formatters").PNGFormatter()
+    assert formatter(fat_jet_figure(masses)).startswith(b"\x89PNG")

@@ -14,10 +14,9 @@ from typing import Any
 
 import numpy as np
 from matplotlib.backends.backend_agg import FigureCanvasAgg
-from matplotlib.figure import Figure
 from numpy.typing import NDArray
 
-from toprecon.figures.style import DPI, PAPER
+from toprecon.figures.style import DPI, PAPER, Drawing
 
 LADDER = (1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0)
 """Ends of an axis, times a power of ten."""
@@ -38,7 +37,7 @@ class LiveFigure:
     """
 
     def __init__(self, size: tuple[float, float], *, dpi: int = DPI) -> None:
-        self.figure = Figure(figsize=size, dpi=dpi, facecolor=PAPER)
+        self.figure = Drawing(figsize=size, dpi=dpi, facecolor=PAPER)
         self._canvas = FigureCanvasAgg(self.figure)
         self._resting: set[Any] = set()
         self._rest: Any = None

@@ -51,10 +51,17 @@ CLASSES = {
 """Name, colour and hatching of the classes, in the order in which they are stacked."""
 
 
+class Drawing(Figure):
+    """A figure that a notebook shows when it is the last thing in a cell."""
+
+    def _repr_png_(self) -> bytes:
+        return png(self)
+
+
 def blank(figure: Figure | None, size: tuple[float, float]) -> Figure:
     """Return an empty figure: the one given, cleared, or a new one."""
     if figure is None:
-        figure = Figure(figsize=size, dpi=DPI, facecolor=PAPER)
+        figure = Drawing(figsize=size, dpi=DPI, facecolor=PAPER)
         FigureCanvasAgg(figure)
     else:
         figure.clear()
