@@ -120,7 +120,7 @@ def fat_jet_figure(
     left.set(xlabel="mass of the hadronic fat jet [GeV]", ylabel="share per 5 GeV")
     right.set(xlabel="mass of the W candidate [GeV]", ylabel="share per 4 GeV")
     left.legend(
-        loc="lower left", bbox_to_anchor=(-0.03, 1.0), frameon=False, fontsize=8.5,
+        loc="lower left", bbox_to_anchor=(-0.03, 1.0), frameon=False, fontsize=8,
         labelcolor=style.INK, borderaxespad=0.1,
     )  # fmt: skip
     right.set_title(
