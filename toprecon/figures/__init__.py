@@ -20,6 +20,7 @@ from toprecon.figures.cuts import (
     cut_flow_figure,
     distribution_figure,
 )
+from toprecon.figures.datalike import data_like_figure, tail_figure
 from toprecon.figures.event import EventObject, EventView, event_figure
 from toprecon.figures.flips import flip_figure
 from toprecon.figures.live import LiveFigure
@@ -42,6 +43,7 @@ __all__ = [
     "closure_figure",
     "comparison_figure",
     "cut_flow_figure",
+    "data_like_figure",
     "distribution_figure",
     "event_figure",
     "fat_jet_figure",
@@ -51,5 +53,6 @@ __all__ = [
     "purity_figure",
     "scan_figure",
     "tag_figure",
+    "tail_figure",
     "usual_variants",
 ]

@@ -9,13 +9,16 @@ from toprecon.statistics.counting import asymmetry_from_counts, fraction_from_co
 from toprecon.statistics.linear import Estimate, ratio
 from toprecon.statistics.measured import Measured
 from toprecon.statistics.spectrum import asymmetry_from_spectrum, asymmetry_of_spectrum
+from toprecon.statistics.templates import TemplateFit, fit_templates
 
 __all__ = [
     "Estimate",
     "Measured",
+    "TemplateFit",
     "asymmetry_from_counts",
     "asymmetry_from_spectrum",
     "asymmetry_of_spectrum",
+    "fit_templates",
     "fraction_from_counts",
     "ratio",
 ]

@@ -48,6 +48,12 @@ from toprecon.study.chunks import (
 from toprecon.study.closing import angle_linearity, closure_of, coupling_dependence
 from toprecon.study.comparing import compare_plans
 from toprecon.study.cutting import Cutting, apply_cuts, passes_cut
+from toprecon.study.datalike import (
+    DataLike,
+    TailFraction,
+    data_like,
+    unmatched_from_tail,
+)
 from toprecon.study.handoff import HandOff, check_target, read_hand_off, write_hand_off
 from toprecon.study.interpreting import bias_meaning, helicity_summary
 from toprecon.study.live import LiveStudy
@@ -93,6 +99,7 @@ __all__ = [
     "Channel",
     "CutOptions",
     "Cutting",
+    "DataLike",
     "Direction",
     "EstimatorOptions",
     "EventTable",
@@ -115,6 +122,7 @@ __all__ = [
     "StudyResult",
     "StudySums",
     "TagQuality",
+    "TailFraction",
     "UnfoldingOptions",
     "VariationOptions",
     "angle_linearity",
@@ -129,6 +137,7 @@ __all__ = [
     "compare_plans",
     "content_checksum",
     "coupling_dependence",
+    "data_like",
     "describe",
     "finish",
     "helicity_summary",
@@ -151,6 +160,7 @@ __all__ = [
     "summarise",
     "summarise_chunk",
     "tag_quality",
+    "unmatched_from_tail",
     "variation_shifts",
     "vary",
     "write_events",
