@@ -49,6 +49,7 @@ from toprecon.study.closing import angle_linearity, closure_of, coupling_depende
 from toprecon.study.comparing import compare_plans
 from toprecon.study.cutting import Cutting, apply_cuts, passes_cut
 from toprecon.study.datalike import (
+    ANGLE,
     DataLike,
     TailFraction,
     data_like,
@@ -82,6 +83,7 @@ from toprecon.study.varying import variation_shifts
 from toprecon.study.weights import SampleFactors, sample_factors
 
 __all__ = [
+    "ANGLE",
     "CAUTIONS",
     "CHUNK_SIZE",
     "OBSERVABLES",

@@ -14,6 +14,9 @@ import itertools
 import json
 from collections.abc import Sequence
 from pathlib import Path
+from typing import Any
+
+import awkward as ak
 
 from toprecon.errors import InputError, StudyError
 from toprecon.events import EventTable
@@ -22,10 +25,12 @@ from toprecon.io import (
     EventSource,
     InputReport,
     SourceDescription,
+    open_events,
     read_chunk,
 )
 from toprecon.study.plan import StudyPlan
 from toprecon.study.reconstruction import reconstruct
+from toprecon.study.sums import check_plan
 
 
 def reconstruct_chunk(
@@ -103,8 +108,37 @@ def check_references(refs: Sequence[ChunkRef]) -> None:
             raise StudyError(msg)
 
 
-def reconstruct_source(source: EventSource, plan: StudyPlan) -> EventTable:
-    """Return the event table of a whole source."""
+def reconstruct_source(
+    source: Any, plan: StudyPlan, *, layout: Any = None, catalogue: Any = None
+) -> EventTable:
+    """Return the event table of whatever a study can be made of.
+
+    Parameters
+    ----------
+    source : EventSource, EventTable, events, path or list of paths
+        Files are reconstructed chunk by chunk; a table is returned as it is.
+    plan : StudyPlan
+        The plan.
+    layout, catalogue : optional
+        How to read files, see :func:`toprecon.open_events`.
+
+    Returns
+    -------
+    EventTable
+        All events.
+
+    Raises
+    ------
+    InputError
+        If there are none.
+    """
+    if isinstance(source, EventTable):
+        check_plan(source, plan)
+        return source
+    if isinstance(source, ak.Array):
+        return reconstruct(source, plan)
+    if not isinstance(source, EventSource):
+        source = open_events(source, layout=layout, catalogue=catalogue)
     tables = [reconstruct(events, plan) for events in source.chunks()]
     if not tables:
         msg = f"{source}: at least one event is required; got none"

@@ -162,9 +162,9 @@ class BoostedPanel(Panel):
             )
         if view == MASSES:
             return (
-                "from toprecon import open_events, reconstruct\n"
-                "from toprecon.figures import fat_jet_figure\n\n"
-                "table = reconstruct(open_events(source).read(), plan)\n"
+                "from toprecon.figures import fat_jet_figure\n"
+                "from toprecon.study import reconstruct_source\n\n"
+                "table = reconstruct_source(source, plan)\n"
                 "fat_jet_figure(table)  # boosted.mass, boosted.groomed_mass"
             )
         observable = self.observable.value

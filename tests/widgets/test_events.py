@@ -1,0 +1,59 @@
+"""The events panel: cut flow, the data-like view and the tail."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+
+from toprecon.study import StudyPlan, branch_plan
+from toprecon.widgets import EventsPanel
+
+SAMPLES = Path(__file__).parents[2] / "sample_events"
+PLAN = StudyPlan().with_settings({"beams.luminosity": 500})
+
+
+@pytest.fixture(scope="module")
+def panel():
+    panel = EventsPanel(
+        str(SAMPLES / "catalogue.toml"),
+        PLAN.with_cut("pairing.chi2", high=15),
+        synchronous=True,
+    )
+    yield panel
+    panel.close()
+
+
+def test_every_view_has_its_picture_sentence_and_code(panel):
+    pictures = set()
+    for view, words, code in (
+        ("cut flow", "", "cut_flow_figure"),
+        ("as in data", "expected events by process: lepjets_550", "data_like(table"),
+        ("unmatched from the tail", "from truth", "unmatched_from_tail(table"),
+    ):
+        panel.view.value = view
+        assert panel.errors.text == ""
+        assert words in panel.text.value
+        assert "+-" not in panel.text.value
+        assert code in panel.python()
+        pictures.add(bytes(panel.picture.widget.value))
+        shown = panel.observable.layout.display is None
+        assert shown == (view == "as in data")
+    assert len(pictures) == 3
+
+
+def test_any_observable_can_be_shown(panel):
+    panel.view.value = "as in data"
+    before = bytes(panel.picture.widget.value)
+    panel.observable.value = "pairing.chi2"
+    assert bytes(panel.picture.widget.value) != before
+    assert '"pairing.chi2", beams="plan"' in panel.python()
+
+
+def test_fat_jets_have_no_tail_of_a_pairing_score():
+    path = str(SAMPLES / "lepjets_1500_LR.root")
+    panel = EventsPanel(path, branch_plan(PLAN, "boosted"), synchronous=True)
+    panel.view.value = "unmatched from the tail"
+    assert "choose a branch with it" in panel.text.value
+    assert panel.errors.text == ""
+    panel.close()
