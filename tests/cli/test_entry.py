@@ -211,3 +211,14 @@ def test_calibrate_writes_a_plan_that_study_takes(tmp_path, capsys):
     assert "caution" in capsys.readouterr().out
     assert main(["calibrate", *files, "--out", str(plan)]) == 2
     assert "a new file is required" in capsys.readouterr().err
+
+
+def test_variations_are_printed_and_in_the_json(capsys):
+    samples = Path(__file__).parents[2] / "sample_events"
+    words = ["study", str(samples / "lepjets_550_LR.root"), "--variations"]
+    assert main(words) == 0
+    assert "jet energy +1 %" in capsys.readouterr().out
+    assert main([*words, "--json"]) == 0
+    data = json.loads(capsys.readouterr().out)
+    assert data["variations"]["b tags lost 2 %"]["efficiency"]["value"] < 0
+    assert "both helicities" in data["helicities"]["missing"]

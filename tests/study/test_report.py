@@ -9,6 +9,7 @@ import pytest
 from tests.study.numbers import leaves
 from toprecon.study import (
     StudyPlan,
+    helicity_summary,
     result_mapping,
     result_text,
     run_study,
@@ -109,3 +110,24 @@ def test_what_is_right_is_said_for_every_branch(branch, words):
     assert 0.2 < fraction.value < 0.98
     words = words.format(fraction).replace("+-", "±")
     assert words in sentence_of(result.beams)
+
+
+def test_cross_sections_and_left_right_asymmetry_are_told(result):
+    found = helicity_summary(result)
+    data = result_mapping(result)["helicities"]
+    assert data["A_LR"]["value"] == found.left_right.value
+    assert data["names"] == ["sigma_L", "sigma_R", "A_L", "A_R"]
+    total = np.add(data["data_covariance"], data["polarisation_covariance"])
+    assert np.array_equal(total, found.covariance)
+    text = result_text(result)
+    assert f"A_LR    {found.left_right!s:>22}" in text
+    assert f"sigma_L {found['sigma_L']!s:>22} fb" in text
+    assert max(len(line) for line in text.splitlines()) <= 90
+
+
+def test_beams_that_cannot_tell_the_helicities_apart_say_why(study_files, study_plan):
+    same = {"beams.electron_polarisation": 0, "beams.positron_polarisation": 0}
+    result = run_study(study_files, study_plan.with_settings(same))
+    data = result_mapping(result)["helicities"]
+    assert "runs" in data["missing"]
+    assert "A_LR" not in result_text(result)

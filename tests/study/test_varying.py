@@ -1,5 +1,7 @@
 from __future__ import annotations
 
+import json
+
 import pytest
 
 from toprecon.errors import OptionError
@@ -7,8 +9,11 @@ from toprecon.generation import GenerationOptions, generate
 from toprecon.study import (
     StudyPlan,
     VariationOptions,
+    compare_plans,
+    open_events,
     reconstruct,
     run_study,
+    usual_variations,
     variation_shifts,
     vary,
 )
@@ -49,3 +54,43 @@ def test_shifts_are_those_of_two_studies_with_smaller_errors(events):
 def test_something_else_is_no_variation(events):
     with pytest.raises(OptionError, match="'x' must be VariationOptions or a StudyPl"):
         variation_shifts(events, StudyPlan(), {"x": 1.01})
+
+
+def test_usual_variations_of_files_in_a_table(study_files, study_plan):
+    steps = []
+    plan = study_plan
+    found = variation_shifts(study_files, plan, progress=lambda *s: steps.append(s))
+    wanted = usual_variations(plan)
+    assert list(found) == list(wanted)
+    # two files; other beams need no reconstruction of their own
+    assert steps[-1] == (2 * len(wanted), 2 * len(wanted))
+    text = str(found)
+    for name, comparison in found.items():
+        assert name in text
+        assert str(comparison["shift"].difference) in text
+    data = json.loads(json.dumps(found.to_mapping(), allow_nan=False))
+    assert data["b tags lost 2 %"]["efficiency"]["value"] < 0
+    assert data["jet energy +1 %"]["efficiency"]["error"] >= 0
+    events = open_events(study_files).read()
+    louder = {"louder": VariationOptions(jet_energy_scale=1.01)}
+    again = variation_shifts(events, plan, louder)["louder"]["shift"].difference
+    assert again.value == pytest.approx(
+        found["jet energy +1 %"]["shift"].difference.value, abs=1e-12
+    )
+
+
+def test_beams_are_varied_where_a_luminosity_is_stated(study_plan):
+    assert "|P(e-)| 0.01 smaller" in usual_variations(study_plan)
+    plan = study_plan.with_settings({"beams.luminosity": 0})
+    assert "|P(e-)| 0.01 smaller" not in usual_variations(plan)
+
+
+def test_files_are_compared_like_events(study_files, study_plan):
+    other = study_plan.with_settings({"pairing.top_mass": 174.5})
+    first = compare_plans(study_files, study_plan, other)
+    events = open_events(study_files).read()
+    second = compare_plans(events, study_plan, other)
+    assert str(first) == str(second)
+    cuts = study_plan.with_cut("pairing.chi2", high=5)
+    one = compare_plans(str(study_files[0]), study_plan, cuts, beams="LR")
+    assert one.selected_first > 0 == one.selected_second

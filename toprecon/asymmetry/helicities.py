@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import dataclasses
 from collections.abc import Sequence
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -74,6 +75,18 @@ class HelicityObservables:
         position = NAMES.index(name)
         variance = self.covariance[position, position]
         return Measured(float(self.values[position]), float(np.sqrt(variance)))
+
+    def to_mapping(self) -> dict[str, Any]:
+        """Return plain data: the four, A_LR, and the covariances."""
+        return {
+            "names": list(NAMES),
+            "values": self.values.tolist(),
+            "data_covariance": self.data_covariance.tolist(),
+            "polarisation_covariance": self.polarisation_covariance.tolist(),
+            "efficiencies": [e.to_mapping() for e in self.efficiencies],
+            "A_LR": self.left_right.to_mapping(),
+            "A_LR_correlation": [self.left_right_correlation(n) for n in NAMES],
+        }
 
     @property
     def correlation(self) -> FloatArray:

@@ -19,11 +19,13 @@ from toprecon.errors import InputError, MissingPackageError, OptionError
 from toprecon.study import (
     Recipe,
     StudyPlan,
+    VariationShifts,
     calibrate_plan,
     check_target,
     produce,
     result_text,
     run_study,
+    variation_shifts,
 )
 
 FIRST_NOTEBOOK = Path("notebooks") / "01_first_look.ipynb"
@@ -56,11 +58,23 @@ def study(options: argparse.Namespace) -> int:
     if options.out:
         folder = result.hand_off(options.out, replace=options.replace)
         print(f"hand-off written to {folder}", file=sys.stderr)
+    shifts = _variations(options, plan) if options.variations else None
     if options.json:
-        print(json.dumps(result.to_mapping(), allow_nan=False))
+        data = result.to_mapping()
+        if shifts is not None:
+            data["variations"] = shifts.to_mapping()
+        print(json.dumps(data, allow_nan=False))
     else:
         print(result_text(result))
+        if shifts is not None:
+            print(f"\n{shifts}")
     return 0
+
+
+def _variations(options: argparse.Namespace, plan: StudyPlan) -> VariationShifts:
+    """Carry out the usual variations of a study."""
+    one = options.files[0] if len(options.files) == 1 else options.files
+    return variation_shifts(one, plan, layout=options.layout, progress=_progress())
 
 
 def calibrate(options: argparse.Namespace) -> int:

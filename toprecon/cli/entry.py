@@ -75,6 +75,12 @@ def parser() -> argparse.ArgumentParser:
         help="change one setting of the plan; may be repeated",
     )
     study.add_argument(
+        "--variations",
+        action="store_true",
+        help="also reconstruct with other energy scales, b tags, masses and beams, and "
+        "print how the results shift",
+    )
+    study.add_argument(
         "--json", action="store_true", help="print the result as JSON instead"
     )
     study.add_argument(

@@ -79,7 +79,11 @@ from toprecon.study.scanning import scan_cuts
 from toprecon.study.storing import content_checksum
 from toprecon.study.sums import StudySums, merge, summarise
 from toprecon.study.tagging import TagQuality, tag_quality
-from toprecon.study.varying import variation_shifts
+from toprecon.study.varying import (
+    VariationShifts,
+    usual_variations,
+    variation_shifts,
+)
 from toprecon.study.weights import SampleFactors, sample_factors
 
 __all__ = [
@@ -127,6 +131,7 @@ __all__ = [
     "TailFraction",
     "UnfoldingOptions",
     "VariationOptions",
+    "VariationShifts",
     "angle_linearity",
     "apply_cuts",
     "bias_meaning",
@@ -163,6 +168,7 @@ __all__ = [
     "summarise_chunk",
     "tag_quality",
     "unmatched_from_tail",
+    "usual_variations",
     "variation_shifts",
     "vary",
     "write_events",

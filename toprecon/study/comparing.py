@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
-
-import awkward as ak
 
 from toprecon.asymmetry import Comparison, Rows, compare
 from toprecon.errors import StudyError
 from toprecon.events import EventTable
+from toprecon.study.chunks import reconstruct_source
 from toprecon.study.cutting import apply_cuts
 from toprecon.study.plan import StudyPlan
-from toprecon.study.reconstruction import reconstruct
 from toprecon.study.sums import check_plan
 from toprecon.study.weights import weighted_rows
 
@@ -22,18 +21,22 @@ def compare_plans(
     second: StudyPlan,
     *,
     beams: str = "plan",
+    layout: Any = None,
+    catalogue: Any = None,
 ) -> Comparison:
     """Carry out two plans on the same events and compare them with paired errors.
 
     Parameters
     ----------
-    source : events, EventTable or pair of EventTable
+    source : EventSource, events, path, list of paths, EventTable or pair of tables
         Events are reconstructed with both plans; one table serves two plans that
         differ in cuts or beams only; two tables were made with one plan each.
     first, second : StudyPlan
         The plans.
     beams : str
         ``"plan"`` (each its own), ``"LR"`` or ``"RL"``.
+    layout, catalogue : optional
+        How to read files, see :func:`toprecon.open_events`.
 
     Returns
     -------
@@ -45,7 +48,8 @@ def compare_plans(
     StudyError
         If one table is given for plans that reconstruct differently.
     """
-    tables = _tables(source, first, second)
+    reading = {"layout": layout, "catalogue": catalogue}
+    tables = _tables(source, first, second, reading)
     sides = []
     for table, plan in zip(tables, (first, second), strict=True):
         check_plan(table, plan)
@@ -56,13 +60,10 @@ def compare_plans(
 
 
 def _tables(
-    source: Any, first: StudyPlan, second: StudyPlan
+    source: Any, first: StudyPlan, second: StudyPlan, reading: dict[str, Any]
 ) -> tuple[EventTable, EventTable]:
     """Return a table for each plan."""
     same = first.reconstruct_hash == second.reconstruct_hash
-    if isinstance(source, ak.Array):
-        table = reconstruct(source, first)
-        return table, table if same else reconstruct(source, second)
     if isinstance(source, EventTable):
         if not same:
             msg = (
@@ -71,5 +72,15 @@ def _tables(
             )
             raise StudyError(msg)
         return source, source
-    one, other = source
-    return one, other
+    if isinstance(source, Sequence) and _are_tables(source):
+        one, other = source
+        return one, other
+    table = reconstruct_source(source, first, **reading)
+    if same:
+        return table, table
+    return table, reconstruct_source(source, second, **reading)
+
+
+def _are_tables(source: Sequence[Any]) -> bool:
+    """Whether these are tables, and not paths."""
+    return len(source) > 0 and all(isinstance(one, EventTable) for one in source)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 from toprecon.asymmetry import (
     BeamRun,
@@ -13,9 +14,11 @@ from toprecon.asymmetry import (
     meaning_of,
 )
 from toprecon.errors import StudyError
-from toprecon.study.result import StudyResult
 from toprecon.study.weights import polarisations_of
 from toprecon.treelevel import ElectroweakInputs
+
+if TYPE_CHECKING:
+    from toprecon.study.result import StudyResult
 
 
 def bias_meaning(

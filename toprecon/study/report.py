@@ -5,7 +5,9 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING, Any
 
+from toprecon.errors import StudyError
 from toprecon.statistics import Measured
+from toprecon.study.interpreting import helicity_summary
 
 if TYPE_CHECKING:
     from toprecon.asymmetry import AsymmetryResult, EstimatorOptions, EstimatorResult
@@ -56,6 +58,7 @@ def result_mapping(result: StudyResult) -> dict[str, Any]:
         "by_helicity": {
             n: _beams_mapping(b, plan.asymmetry) for n, b in result.by_helicity.items()
         },
+        "helicities": _helicities_mapping(result),
         "statuses": result.statuses,
         "undefined": result.undefined,
         "samples": [sample.to_mapping() for sample in result.samples],
@@ -92,6 +95,7 @@ def result_text(result: StudyResult) -> str:
         meaning = {"LR": "e-L e+R", "RL": "e-R e+L"}[name]
         title = f"beams {name} ({meaning})"
         lines += _beams_lines(title, beams, plan.asymmetry)
+    lines += _helicities_lines(result)
     for observable, count in result.undefined.items():
         if count:
             lines.append(f"{count} events fail the cut on an undefined {observable}")
@@ -138,6 +142,39 @@ def _right_words(a: AsymmetryResult) -> str:
     if leaking:
         return f"All quarks inside the hadronic fat jet in {a.fraction_right} of events"
     return f"Correct pairing in {a.fraction_right} of the matched events"
+
+
+def _helicities_mapping(result: StudyResult) -> dict[str, Any]:
+    """Cross sections and asymmetries of both helicities, or why there are none."""
+    try:
+        return helicity_summary(result).to_mapping()
+    except StudyError as error:
+        return {"missing": str(error)}
+
+
+def _helicities_lines(result: StudyResult) -> list[str]:
+    """Cross sections, A_FB and A_LR that two runs of opposite polarisations measure."""
+    if len(result.by_helicity) != 2 or not result.beams.is_expected:
+        return []
+    try:
+        found = helicity_summary(result)
+    except StudyError as error:
+        return [*_wrapped(str(error)), ""]
+    names = ("sigma_L", "sigma_R", "A_L", "A_R")
+    units = (" fb", " fb", "", "")
+    lines = [
+        "expected from two runs of opposite polarisations, half the luminosity each"
+    ]
+    lines += [
+        f"  {name:<8}{found[name]!s:>22}{unit:<4} correlations "
+        + " ".join(f"{c:+.2f}" for c in row)
+        for name, unit, row in zip(names, units, found.correlation, strict=True)
+    ]
+    correlations = " ".join(f"{found.left_right_correlation(n):+.2f}" for n in names)
+    lines.append(
+        f"  {'A_LR':<8}{found.left_right!s:>22}     correlations {correlations}"
+    )
+    return [*lines, ""]
 
 
 def _number(value: float) -> float | None:

@@ -2,80 +2,198 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import dataclasses
+from collections.abc import Callable, Iterator, Mapping
+from typing import Any
 
 import awkward as ak
 
 from toprecon.asymmetry import Comparison
-from toprecon.errors import OptionError
+from toprecon.errors import InputError, OptionError
 from toprecon.events import EventTable
+from toprecon.io import EventSource, open_events
 from toprecon.selection import VariationOptions, vary
 from toprecon.study.comparing import compare_plans
 from toprecon.study.plan import StudyPlan
 from toprecon.study.reconstruction import reconstruct
 
+CHUNK = 20_000
+"""Events reconstructed at a time, once per variation."""
+
+QUANTITIES = ("efficiency", "generated_selected", "reconstructed", "shift")
+"""Columns of the table."""
+
+Variations = Mapping[str, VariationOptions | StudyPlan]
+
+
+@dataclasses.dataclass(frozen=True)
+class VariationShifts(Mapping[str, Comparison]):
+    """What variations do, each compared with the nominal study event by event.
+
+    Parameters
+    ----------
+    comparisons : dict of Comparison
+        By name; differences are varied minus nominal, with paired errors.
+    """
+
+    comparisons: dict[str, Comparison]
+
+    def __getitem__(self, name: str) -> Comparison:
+        return self.comparisons[name]
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self.comparisons)
+
+    def __len__(self) -> int:
+        return len(self.comparisons)
+
+    def to_mapping(self) -> dict[str, dict[str, dict[str, float | None]]]:
+        """Return the differences as plain data, by variation and quantity."""
+        return {
+            name: {q: found[q].difference.to_mapping() for q in QUANTITIES}
+            for name, found in self.comparisons.items()
+        }
+
+    def __str__(self) -> str:
+        heads = ("efficiency", "A_FB gen. selected", "A_FB reconstructed", "shift")
+        lines = [f"{'varied - nominal':24}" + "".join(f"{head:>22}" for head in heads)]
+        lines += [
+            f"{name:24}" + "".join(f"{found[q].difference!s:>22}" for q in QUANTITIES)
+            for name, found in self.comparisons.items()
+        ]
+        return "\n".join(lines)
+
+
+def usual_variations(plan: StudyPlan) -> dict[str, VariationOptions | StudyPlan]:
+    """Return variations that a first look needs.
+
+    Parameters
+    ----------
+    plan : StudyPlan
+        The nominal plan.
+
+    Returns
+    -------
+    dict
+        Jet and lepton energies, jet resolution, b-tag efficiency, the top mass assumed
+        in the pairing, and, where the plan states a luminosity, the polarisation of the
+        electron beam. Their sizes are round numbers, not anybody's uncertainties.
+    """
+    out: dict[str, VariationOptions | StudyPlan] = {
+        "jet energy +1 %": VariationOptions(jet_energy_scale=1.01),
+        "jet energy -1 %": VariationOptions(jet_energy_scale=0.99),
+        "jet resolution 5 % worse": VariationOptions(jet_energy_smearing=0.05),
+        "lepton energy +0.5 %": VariationOptions(lepton_energy_scale=1.005),
+        "b tags lost 2 %": VariationOptions(btag_loss=0.02),
+    }
+    mass = plan.pairing.top_mass
+    for sign, step in (("+", 1.0), ("-", -1.0)):
+        changed = {"pairing.top_mass": mass + step, "fit.top_mass": mass + step}
+        out[f"assumed m_t {sign}1 GeV"] = plan.with_settings(changed)
+    if plan.beams.luminosity > 0:
+        p = plan.beams.electron_polarisation
+        moved = p - 0.01 if p > 0 else p + 0.01
+        settings = {"beams.electron_polarisation": moved}
+        out["|P(e-)| 0.01 smaller"] = plan.with_settings(settings)
+    return out
+
 
 def variation_shifts(
-    events: ak.Array,
+    source: Any,
     plan: StudyPlan,
-    variations: Mapping[str, VariationOptions | StudyPlan],
+    variations: Variations | None = None,
     *,
     beams: str = "plan",
-) -> dict[str, Comparison]:
+    layout: Any = None,
+    catalogue: Any = None,
+    progress: Callable[[int, int], Any] | None = None,
+) -> VariationShifts:
     """Compare varied studies with the nominal one, event by event.
 
     Parameters
     ----------
-    events : ak.Array, shape (E,)
+    source : EventSource, events, path or list of paths
         Events.
     plan : StudyPlan
         The nominal plan.
-    variations : mapping
+    variations : mapping, optional
         By name: a change of the input (:class:`VariationOptions`), or another plan,
-        such as one with another assumed top mass or other polarisations.
+        such as one with another assumed top mass or other polarisations;
+        :func:`usual_variations` if absent.
     beams : str
         ``"plan"``, ``"LR"`` or ``"RL"``.
+    layout, catalogue : optional
+        How to read files, see :func:`toprecon.open_events`.
+    progress : callable, optional
+        Called with (reconstructions done, reconstructions in all).
 
     Returns
     -------
-    dict of Comparison
-        By name; differences are varied minus nominal, with paired errors.
+    VariationShifts
+        A mapping by name; ``print`` shows a table.
 
     Raises
     ------
     OptionError
         If a variation is something else.
+    InputError
+        If there are no events.
 
     Examples
     --------
     Energy scale and assumed mass in one table::
 
         shifts = variation_shifts(
-            events,
+            source,
             plan,
             {
                 "jet energy +1 %": VariationOptions(jet_energy_scale=1.01),
                 "top mass +1 GeV": plan.with_settings({"pairing.top_mass": 173.5}),
             },
         )
+        print(shifts)
         print(shifts["jet energy +1 %"]["reconstructed"].difference)
     """
-    nominal = reconstruct(events, plan)
-    out = {}
-    for name, variation in variations.items():
-        other: EventTable
-        if isinstance(variation, VariationOptions):
-            other, varied = reconstruct(vary(events, variation), plan), plan
-        elif isinstance(variation, StudyPlan):
-            same = variation.reconstruct_hash == plan.reconstruct_hash
-            other, varied = nominal, variation
-            if not same:
-                other = reconstruct(events, variation)
-        else:
+    wanted = usual_variations(plan) if variations is None else dict(variations)
+    for name, variation in wanted.items():
+        if not isinstance(variation, (VariationOptions, StudyPlan)):
             msg = (
                 f"variations: {name!r} must be VariationOptions or a StudyPlan; got "
                 f"{type(variation).__name__}"
             )
             raise OptionError(msg)
-        out[name] = compare_plans((nominal, other), plan, varied, beams=beams)
-    return out
+    again = [n for n, v in wanted.items() if _reconstructs(v, plan)]
+    if not isinstance(source, (EventSource, ak.Array)):
+        source = open_events(source, layout=layout, catalogue=catalogue)
+    in_memory = isinstance(source, ak.Array)
+    n_chunks = 1 if in_memory else len(source.references(CHUNK))
+    total, done = n_chunks * (1 + len(again)), 0
+    parts: dict[str, list[EventTable]] = {name: [] for name in ("", *again)}
+    for events in [source] if in_memory else source.chunks(CHUNK):
+        for name, tables in parts.items():
+            variation = wanted.get(name, plan)
+            if isinstance(variation, VariationOptions):
+                tables.append(reconstruct(vary(events, variation), plan))
+            else:
+                tables.append(reconstruct(events, variation))
+            done += 1
+            if progress is not None:
+                progress(done, total)
+    if not parts[""]:
+        msg = "variations: at least one event is required; got none"
+        raise InputError(msg)
+    whole = {name: EventTable.concatenate(tables) for name, tables in parts.items()}
+    nominal = whole.pop("")
+    found = {}
+    for name, variation in wanted.items():
+        other = variation if isinstance(variation, StudyPlan) else plan
+        pair = (nominal, whole.get(name, nominal))
+        found[name] = compare_plans(pair, plan, other, beams=beams)
+    return VariationShifts(found)
+
+
+def _reconstructs(variation: VariationOptions | StudyPlan, plan: StudyPlan) -> bool:
+    """Whether a variation needs a table of its own."""
+    if isinstance(variation, VariationOptions):
+        return True
+    return variation.reconstruct_hash != plan.reconstruct_hash

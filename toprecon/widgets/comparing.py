@@ -8,13 +8,27 @@ from typing import Any
 import ipywidgets
 
 from toprecon import figures
-from toprecon.study import EventTable, StudyPlan, compare_plans
+from toprecon.study import (
+    EventTable,
+    StudyPlan,
+    VariationShifts,
+    compare_plans,
+    variation_shifts,
+)
 from toprecon.widgets.base import Panel
 from toprecon.widgets.parts import Picture, helping
 
+KEPT, VARIED = "with a kept plan", "with variations"
+COLUMNS = {
+    "efficiency": "efficiency",
+    "generated_selected": "A_FB generated, selected",
+    "reconstructed": "A_FB reconstructed",
+    "shift": "shift of the signal",
+}
+
 
 class ComparePanel(Panel):
-    """Differences between a kept plan and the present one, with paired errors."""
+    """Differences to a kept plan or to a varied input, with paired errors."""
 
     title = "Compare"
 
@@ -34,10 +48,25 @@ class ComparePanel(Panel):
         )
         self.back.on_click(lambda _: self._back())
         self.kept: tuple[EventTable, StudyPlan] | None = None
+        self.view = ipywidgets.ToggleButtons(
+            options=[KEPT, VARIED], value=KEPT, style={"button_width": "12.5em"}
+        )
+        self.view.observe(lambda _: self.redraw(), names="value")
+        self.vary = ipywidgets.Button(
+            description="vary the input",
+            tooltip="reconstructs all events once per variation",
+            disabled=not self.live.can_reconstruct,
+            layout=ipywidgets.Layout(width="10em"),
+        )
+        self.vary.on_click(lambda _: self._vary())
+        self._shifts: tuple[StudyPlan, str, VariationShifts] | None = None
+        self.buttons = ipywidgets.HBox([self.keep, self.back])
         self.picture = Picture()
         self.text = ipywidgets.HTML()
         return [
-            ipywidgets.HBox([self.keep, self.back]),
+            self.view,
+            self.buttons,
+            self.vary,
             helping("the errors of the differences are paired: shared fluctuations "
                     "drop out"),
             self.picture.widget,
@@ -46,6 +75,14 @@ class ComparePanel(Panel):
 
     def paint(self) -> None:
         """Compare, once the study has settled."""
+        is_kept = self.view.value == KEPT
+        self.buttons.layout.display = None if is_kept else "none"
+        self.vary.layout.display = "none" if is_kept else None
+        drawn = is_kept and self.kept is not None
+        self.picture.widget.layout.display = None if drawn else "none"
+        if not is_kept:
+            self._paint_shifts()
+            return
         if self.kept is None:
             self.text.value = (
                 '<p class="toprecon-status">Keep the present plan, then change '
@@ -81,6 +118,11 @@ class ComparePanel(Panel):
 
     def python(self) -> str:
         """Return Python that gives what is shown."""
+        if self.view.value == VARIED:
+            return (
+                "from toprecon.study import variation_shifts\n\n"
+                f'print(variation_shifts(source, plan, beams="{self.shared.beams.value}"))'
+            )
         if self.kept is None:
             return "kept = plan"
         return (
@@ -88,6 +130,56 @@ class ComparePanel(Panel):
             f"kept = {self.kept[1].as_code()}\n"
             f'compare_plans(source, kept, plan, beams="{self.shared.beams.value}")'
         )
+
+    def _paint_shifts(self) -> None:
+        """Show the table of variations, or say how to get it."""
+        if self._shifts is None:
+            self.text.value = (
+                '<p class="toprecon-status">Other jet and lepton energies, resolution, '
+                "b tags and assumed masses, of round sizes: how much would the results "
+                "shift?</p>"
+            )
+            return
+        plan, beams, shifts = self._shifts
+        head = "".join(f"<th>{html.escape(text)}</th>" for text in COLUMNS.values())
+        rows = "".join(
+            f"<tr><td>{html.escape(name)}</td>"
+            + "".join(f"<td>{_signed(found[q].difference)}</td>" for q in COLUMNS)
+            + "</tr>"
+            for name, found in shifts.items()
+        )
+        now = plan == self.live.plan and beams == self.shared.beams.value
+        note = "" if now else "; made with an earlier plan or other beams"
+        self.text.value = (
+            f'<table class="toprecon-table"><tr><th>varied minus nominal</th>{head}</tr>'
+            f'{rows}</table><div class="toprecon-help">paired errors{note}</div>'
+        )
+
+    def _vary(self) -> None:
+        """Carry out the variations in the worker."""
+        live, beams = self.live, self.shared.beams.value
+        source, plan = live.source, live.plan
+        self.vary.disabled = True
+
+        def then(found: VariationShifts) -> None:
+            self.vary.disabled = False
+            self._shifts = (plan, beams, found)
+            self.redraw()
+
+        def failed(error: Exception) -> None:
+            self.vary.disabled = False
+            self.errors.show_error(error)
+
+        with self.errors.guard():
+            live.run(
+                "varying",
+                lambda report: variation_shifts(
+                    source, plan, beams=beams, progress=report
+                ),
+                then,
+                failed=failed,
+                unit="reconstructions",
+            )
 
     def _keep(self) -> None:
         with self.errors.guard():
@@ -100,3 +192,11 @@ class ComparePanel(Panel):
         with self.errors.guard():
             if self.kept is not None:
                 self.live.set_plan(self.kept[1])
+
+
+def _signed(number: Any) -> str:
+    """Return a difference with its sign, for people."""
+    if number.value == 0 and number.error == 0:
+        return "0"
+    text = f"{number}".replace("+-", "±").replace("-", "−")
+    return f"+{text}" if number.value > 0 else text
