@@ -9,7 +9,10 @@ import pytest
 from tests.study.numbers import leaves
 from toprecon.study import (
     StudyPlan,
+    angle_linearity,
+    bias_meaning,
     helicity_summary,
+    open_events,
     result_mapping,
     result_text,
     run_study,
@@ -131,3 +134,25 @@ def test_beams_that_cannot_tell_the_helicities_apart_say_why(study_files, study_
     data = result_mapping(result)["helicities"]
     assert "runs" in data["missing"]
     assert "A_LR" not in result_text(result)
+
+
+def test_parts_of_the_result_print_as_readable_text(result):
+    a = result.by_helicity["LR"].asymmetry
+    budget = str(a.budget).splitlines()
+    assert budget[0].endswith(str(a.generated))
+    assert str(a.budget["wrong_b"].shift) in str(a.budget)
+    assert budget[-1] == f"{'difference':<24}{a.total_shift!s:>22}  paired error"
+    assert f"slope 1-a-b {a.flips.slope}" in str(a.flips)
+    assert f"counting {a.estimators().counting.extrapolated}" in str(a.estimators())
+    meaning = bias_meaning(result, "LR")
+    assert "standard deviations of the expected data" in str(meaning)
+    assert f"f1v_z: {meaning.couplings['f1v_z'].shift}" in str(meaning)
+
+
+def test_linearity_prints_a_row_per_truth(study_files, study_plan):
+    events = open_events(study_files).read()
+    found = angle_linearity(events, study_plan, factors=(0.5, 1.0))
+    lines = str(found).splitlines()
+    assert len(lines) == 4
+    assert lines[1].endswith(str(found["asymmetry x 0.5"]))
+    assert f"slope {found.slope}" in lines[-1]

@@ -106,6 +106,17 @@ class DistortionBudget:
     def __getitem__(self, name: str) -> BudgetStep:
         return {step.name: step for step in self.steps}[name]
 
+    def __str__(self) -> str:
+        lines = [f"{'generated, all signal':<24}{self.generated!s:>22}"]
+        lines += [
+            f"  {step.name:<22}{step.shift!s:>22}  {step.meaning}"
+            for step in self.steps
+            if step.shift.value or step.share
+        ]
+        lines.append(f"{'reconstructed':<24}{self.reconstructed!s:>22}")
+        lines.append(f"{'difference':<24}{self.total!s:>22}  paired error")
+        return "\n".join(lines)
+
 
 def coefficients(categories: tuple[int, ...], *components: int) -> FloatArray:
     """Return coefficients that add some components over some categories, flat."""

@@ -151,6 +151,13 @@ class EstimatorResult:
     correlation: float
     angular_fit: AngularFit
 
+    def __str__(self) -> str:
+        return (
+            f"|cos| < {self.largest_cosine:g}, extrapolated with the generated shape: "
+            f"counting {self.counting.extrapolated}, fit of the angular terms "
+            f"{self.fit.extrapolated}, correlation {self.correlation:.2f}"
+        )
+
 
 def fit_terms(sums: Any, variances: Any, used: NDArray[np.bool_]) -> AngularFit:
     """Fit the three angular terms to a spectrum of the 40 fine bins.

@@ -71,6 +71,20 @@ class BiasMeaning:
 
     caution = CAUTION
 
+    def __str__(self) -> str:
+        lines = [f"bias {self.bias}"]
+        if math.isfinite(self.expected_error):
+            lines[0] += (
+                f", {self.standard_deviations} standard deviations of the expected data "
+                f"({self.expected_error:.4f})"
+            )
+        lines += [
+            f"  as a change of {name}: {item.shift}"
+            for name, item in self.couplings.items()
+        ]
+        lines.append(f"  ({self.caution})")
+        return "\n".join(lines)
+
 
 def asymmetry_derivative(
     coupling: str,

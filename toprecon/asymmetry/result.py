@@ -94,6 +94,12 @@ class FlipResult:
     offset: Measured
     flipped: Measured
 
+    def __str__(self) -> str:
+        return (
+            f"a {self.forward_to_backward}, b {self.backward_to_forward}, "
+            f"slope 1-a-b {self.slope}, offset b-a {self.offset}"
+        )
+
 
 @dataclasses.dataclass(frozen=True)
 class Corrected:

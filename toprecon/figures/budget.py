@@ -81,7 +81,7 @@ def budget_figure(
     axes.set_ylabel(style.A_FB)
     axes.margins(y=0.16)
     style.tidy(axes)
-    axes.tick_params(axis="x", length=0, labelsize=8.5)
+    axes.tick_params(axis="x", length=0, labelsize=8.5 if last < 8 else 7.2)
     style.heading(
         axes, f"what changes {style.A_FB}, step by step; in all "
         f"{style.pm(budget.total, sign=True)}",

@@ -58,6 +58,18 @@ class LinearityResult:
         variance = max(float(self.covariance[k, k]), 0.0)
         return Measured(float(self.residual[k]), float(np.sqrt(variance)))
 
+    def __str__(self) -> str:
+        lines = [f"{'truth':<24}{'generated':>12}{'corrected - generated':>26}"]
+        lines += [
+            f"{name:<24}{value:>12.4f}{self[name]!s:>26}"
+            for name, value in zip(self.names, self.generated, strict=True)
+        ]
+        lines.append(
+            f"corrected = slope x generated + offset: slope {self.slope}, "
+            f"offset {self.offset}"
+        )
+        return "\n".join(lines)
+
     def difference(self, name: str, reference: str) -> Measured:
         """Return how much the residual of one truth exceeds that of another.
 
