@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from toprecon.kinematics import minkowski
 from toprecon.pairing import legs
+from toprecon.pairing.compiled import compiled_lowest, compiled_table, is_wanted
 from toprecon.pairing.hypotheses import Hypotheses
 from toprecon.pairing.names import TermName
 from toprecon.pairing.terms import Term
@@ -132,11 +133,14 @@ def evaluate(
     chi2, second = np.empty(n), np.empty(n)
     share, n_allowed = np.full(n, np.nan), np.zeros(n, dtype=np.int64)
     extra = np.full(n, np.nan)
+    sums, least = chi2_table, two_lowest
+    if is_wanted():
+        sums, least = compiled_table, compiled_lowest
     for events in blocks(n):
-        values = chi2_table(group, table, terms, events)
+        values = sums(group, table, terms, events)
         if joint is not None:
             values += joint.table(group, table, events, np.isfinite(values))
-        best[events], chi2[events], second[events] = two_lowest(values)
+        best[events], chi2[events], second[events] = least(values)
         if with_share:
             with np.errstate(invalid="ignore"):  # inf - inf where all are masked
                 weights = np.exp(-0.5 * (values - chi2[events]))
