@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import re
 
 import numpy as np
 import pytest
@@ -25,18 +26,27 @@ def masses(rng):
     }
 
 
+def half_of(words):
+    """Interval stated in the legend."""
+    return [float(x) for x in re.search(r"in (\d+) to (\d+) GeV", words).groups()]
+
+
 def legend_of(axes):
     return [text.get_text() for text in axes.get_legend().get_texts()]
 
 
-def test_masses_are_drawn_with_median_and_core(masses):
+def test_masses_are_drawn_with_median_and_half_of_them(masses):
     figure = fat_jet_figure(masses, caption="simulated")
     left, right = figure.axes
     before, groomed = legend_of(left)
     assert "median 185 GeV" in before
     assert "median 172 GeV" in groomed
-    core = np.mean(np.abs(masses["boosted.groomed_mass"][:-1] - 172.5) < 15)
-    assert f"{100 * core:.0f} % within 15 GeV" in groomed
+    # the shortest half of a Gaussian is 2 x 0.6745 sigma wide: 10.8 and 34 GeV; it is
+    # found to about a tenth of that
+    low, high = half_of(groomed)
+    assert high - low == pytest.approx(10.8, abs=2)
+    low, high = half_of(before)
+    assert high - low == pytest.approx(33.7, abs=4)
     heights = [patch.get_data().values for patch in left.patches]
     assert [h.sum() for h in heights] == pytest.approx([1, 1], abs=0.01)
     assert right.patches[0].get_data().values.sum() == pytest.approx(1)
@@ -77,24 +87,46 @@ class Point:
     efficiency: Measured
     generated_selected: Measured
     shift: Measured
+    possible: Measured
 
 
 def test_branches_are_drawn_against_energy():
     rows = [
-        Point(b, e, h, Measured(0.5, 0.01), Measured(0.4, 0.02), Measured(s, 0.01))
+        Point(
+            b,
+            e,
+            h,
+            efficiency=Measured(0.5, 0.01),
+            generated_selected=Measured(0.4, 0.02),
+            shift=Measured(s, 0.01),
+            possible=Measured(0.9, 0.01),
+        )
         for b, s in (("resolved", -0.1), ("boosted", 0.02), ("wide", 0.0))
         for e in (1000.0, 3000.0)
         for h in ("LR", "RL")
     ]
     figure = branch_figure(rows)
-    left, right = figure.axes
-    assert len(legend_of(left)) == 6
-    assert "resolved, e-L e+R" in legend_of(left)
-    drawn = left.containers[0].lines[0].get_ydata()
-    assert list(drawn) == pytest.approx([-0.25, -0.25])
-    assert list(right.get_xticks()) == [1000, 3000]
+    names = [text.get_text() for text in figure.legends[0].get_texts()]
+    assert len(names) == 6
+    assert "resolved, e-L e+R" in names
+    drawn = [list(a.containers[0].lines[0].get_ydata()) for a in figure.axes]
+    assert drawn[:2] == [[0.9, 0.9], [0.5, 0.5]]
+    assert drawn[2] == pytest.approx([-0.25, -0.25])
+    assert list(figure.axes[2].get_xticks()) == [1000, 3000]
     one = branch_figure(rows[:1], figure=figure)
-    assert len(legend_of(one.axes[0])) == 1
+    assert len(one.legends) == 1
+    assert len(one.legends[0].get_texts()) == 1
+
+
+def test_half_of_the_masses_follows_the_weights():
+    values = np.array([100.0, 101.0, 102.0, 170.0, 171.0, 300.0, np.nan])
+    table = {f"boosted.{n}": values for n in ("mass", "groomed_mass", "w_mass")}
+    plain = legend_of(fat_jet_figure(table).axes[0])[0]
+    assert half_of(plain) == [100, 102]
+    weight = np.array([1, 1, 1, 4, 4, 1, 9.0])
+    weighted = legend_of(fat_jet_figure(table, weight=weight).axes[0])[0]
+    assert half_of(weighted) == [170, 171]
+    assert "median 170 GeV" in weighted
 
 
 def test_figures_show_themselves_in_a_notebook(masses):

@@ -8,11 +8,13 @@ import pytest
 
 from tests.study.numbers import leaves
 from toprecon.study import (
+    PairingClass,
     StudyPlan,
     angle_linearity,
     bias_meaning,
     helicity_summary,
     open_events,
+    reconstruct,
     result_mapping,
     result_text,
     run_study,
@@ -96,8 +98,11 @@ def test_the_result_in_one_line(result):
     ("branch", "words"),
     [
         ("resolved", "Correct pairing in {} of the matched events"),
-        ("boosted", "All quarks inside the hadronic fat jet in {} of events"),
-        ("per event", "or all quarks inside the fat jet, in {} of the events matched"),
+        ("boosted", "inside their fat jets in {} of the selected signal events"),
+        (
+            "per event",
+            "inside their fat jets, in {} of the signal events matched or with",
+        ),
     ],
 )
 def test_what_is_right_is_said_for_every_branch(branch, words):
@@ -113,6 +118,21 @@ def test_what_is_right_is_said_for_every_branch(branch, words):
     assert 0.2 < fraction.value < 0.98
     words = words.format(fraction).replace("+-", "±")
     assert words in sentence_of(result.beams)
+
+
+@pytest.mark.parametrize("branch", ["boosted", "per event"])
+def test_fat_jets_none_of_which_leaks_are_not_called_pairings(branch):
+    sample = Path(__file__).parents[2] / "sample_events" / "lepjets_1500_LR.root"
+    plan = StudyPlan().with_settings({"study.branch": branch})
+    plan = plan.with_cut("boosted.n_tagged", low=1)
+    events = open_events(str(sample)).read()
+    table = reconstruct(events, plan)
+    whole = table["pairing_class"] != PairingClass.LEAKING
+    result = run_study(table.take(np.flatnonzero(whole)), plan)
+    assert result.asymmetry.fraction_right.value == 1
+    for words in (sentence_of(result.beams), result_text(result)):
+        assert "inside their fat jets" in " ".join(words.split())
+        assert "orrect pairing in" not in words
 
 
 def test_cross_sections_and_left_right_asymmetry_are_told(result):

@@ -35,7 +35,7 @@ def test_one_button_takes_tagged_fat_jets_into_the_plan(panel):
     masses = panel.picture.widget.value
     panel.view.value = "observable"
     assert panel.picture.widget.value != masses
-    assert "inside the hadronic fat jet" in panel.shared.status.value
+    assert "inside their fat jets" in panel.shared.status.value
 
 
 @pytest.mark.parametrize(

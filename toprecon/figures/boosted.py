@@ -20,8 +20,6 @@ FloatArray = NDArray[np.float64]
 
 MASS_RANGE = (0.0, 350.0)
 W_RANGE = (0.0, 160.0)
-CORE = 15.0
-"""Masses this near to the top mass are counted in the legend [GeV]."""
 NEAR_TOP = 25.0
 """Groomed masses this near to the top mass enter the figure of the W candidate [GeV]."""
 
@@ -62,6 +60,10 @@ class BranchPoint(Protocol):
     def shift(self) -> Measured:
         """Reconstructed minus generated of the same events."""
 
+    @property
+    def possible(self) -> Measured:
+        """Share of the signal in which the branch can be right."""
+
 
 def fat_jet_figure(
     table: EventTable | Mapping[str, ArrayLike],
@@ -87,7 +89,8 @@ def fat_jet_figure(
     Returns
     -------
     Figure
-        Left: both masses, with median and the share near the top mass. Right: mass of the W candidate where the groomed mass is near the top's.
+        Left: both masses, with median and the shortest interval that holds half of
+        them. Right: mass of the W candidate where the groomed mass is near the top's.
     """
     plain, groomed, w = (
         np.asarray(table[f"boosted.{name}"], dtype=np.float64)
@@ -102,10 +105,10 @@ def fat_jet_figure(
         ("before grooming", plain, style.SIGNAL_ONLY),
         ("groomed", groomed, style.RECONSTRUCTED),
     ):
-        middle, near_top = _median_and_core(values, weights)
+        middle, low, high = _median_and_half(values, weights)
         said = (
-            f"{label}: median {middle:.0f} GeV, {100 * near_top:.0f} % within "
-            f"{CORE:g} GeV of the top"
+            f"{label}: median {middle:.0f} GeV, half of them in "
+            f"{low:.0f} to {high:.0f} GeV"
         )
         _steps(left, values, weights, MASS_RANGE, 70, label=said, **look)
     _steps(right, w[near], weights[near], W_RANGE, 40, **style.RECONSTRUCTED)
@@ -200,12 +203,15 @@ def branch_figure(
     Returns
     -------
     Figure
-        Left: shift of A_FB by the reconstruction over the generated value of the same
-        events. Right: efficiency. Filled: e-L e+R; open: e-R e+L and mixed beams.
+        Left: signal in which the branch can be right (every quark with a jet of its
+        own; all quarks inside their fat jets). Middle: signal selected. Right: shift of
+        A_FB by the reconstruction over the generated value of the same events. Filled:
+        e-L e+R; open: e-R e+L and mixed beams.
     """
     figure = style.blank(figure, (7.2, 3.0))
-    left = figure.add_axes((0.11, 0.21, 0.36, 0.64))
-    right = figure.add_axes((0.6, 0.21, 0.36, 0.64))
+    possible, selected, shift = (
+        figure.add_axes((x, 0.21, 0.235, 0.59)) for x in (0.065, 0.4, 0.745)
+    )
     names = list(dict.fromkeys(row.branch for row in rows))
     energies = sorted({row.sqrt_s for row in rows})
     spacing = 0.02 * (energies[-1] - energies[0]) or 0.02 * energies[0]
@@ -229,22 +235,28 @@ def branch_figure(
         }
         x = [r.sqrt_s + (place - 0.5 * (len(series) - 1)) * spacing for r in mine]
         scale = [r.generated_selected.value or math.nan for r in mine]
-        left.errorbar(
+        shift.errorbar(
             x,
             [r.shift.value / s for r, s in zip(mine, scale, strict=True)],
             yerr=[r.shift.error / abs(s) for r, s in zip(mine, scale, strict=True)],
             **look,
         )
-        right.errorbar(
-            x,
-            [r.efficiency.value for r in mine],
-            yerr=[r.efficiency.error for r in mine],
-            **look,
-        )
-    left.axhline(0, color=style.INK, linewidth=0.8)
-    left.set_ylabel(f"relative shift of {style.A_FB}")
-    right.set(ylabel="share of the signal selected", ylim=(0, 1))
-    for axes in (left, right):
+        for axes, shares in (
+            (possible, [r.possible for r in mine]),
+            (selected, [r.efficiency for r in mine]),
+        ):
+            axes.errorbar(
+                x, [s.value for s in shares], yerr=[s.error for s in shares], **look
+            )
+    shift.axhline(0, color=style.INK, linewidth=0.8, zorder=0)
+    for axes, title in (
+        (possible, "can be right, of all signal"),
+        (selected, "selected, of all signal"),
+        (shift, f"shift of {style.A_FB}, relative"),
+    ):
+        if axes is not shift:
+            axes.set_ylim(0, 1)
+        axes.set_title(title, loc="left", fontsize=9, color=style.INK)
         axes.set_xlabel("collision energy [GeV]")
         axes.set_xticks(energies)
         axes.set_xlim(
@@ -252,9 +264,9 @@ def branch_figure(
             energies[-1] + 3 * len(series) * spacing,
         )
         style.tidy(axes)
-    left.legend(
-        *left.get_legend_handles_labels(), loc="lower left",
-        bbox_to_anchor=(-0.05, 1.0), ncols=4, frameon=False, fontsize=8.5,
+    figure.legend(
+        *possible.get_legend_handles_labels(), loc="upper left",
+        bbox_to_anchor=(0.03, 1.0), ncols=4, frameon=False, fontsize=8.5,
         labelcolor=style.INK, columnspacing=1.2,
     )  # fmt: skip
     style.small_print(figure, caption)
@@ -264,14 +276,23 @@ def branch_figure(
 _BEAMS = {"LR": "e-L e+R", "RL": "e-R e+L"}
 
 
-def _median_and_core(values: FloatArray, weight: FloatArray) -> tuple[float, float]:
-    """Weighted median, and share near the top mass."""
+def _median_and_half(
+    values: FloatArray, weight: FloatArray
+) -> tuple[float, float, float]:
+    """Weighted median, and the shortest interval that holds half of the weight."""
     keep = np.isfinite(values) & (weight > 0)
     if not keep.any():
-        return math.nan, math.nan
-    x, w = values[keep], weight[keep]
-    middle = np.quantile(x, 0.5, weights=w, method="inverted_cdf")
-    return float(middle), float(w[np.abs(x - TOP_MASS) < CORE].sum() / w.sum())
+        return math.nan, math.nan, math.nan
+    order = np.argsort(values[keep])
+    x, w = values[keep][order], weight[keep][order]
+    below = np.cumsum(w) - w
+    half = 0.5 * w.sum()
+    # interval k starts at x[k] and stops where half of the weight is inside
+    stop = np.searchsorted(below + w, (below + half) * (1 - 1e-12))
+    start = np.flatnonzero(stop < len(x))
+    best = start[np.argmin(x[stop[start]] - x[start])]
+    middle = x[np.searchsorted(below + w, half * (1 - 1e-12))]
+    return float(middle), float(x[best]), float(x[stop[best]])
 
 
 def _steps(

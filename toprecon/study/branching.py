@@ -12,7 +12,7 @@ import numpy as np
 from toprecon.errors import StudyError
 from toprecon.events import Channel, EventTable
 from toprecon.io import EventSource, open_events
-from toprecon.statistics import Measured
+from toprecon.statistics import Measured, fraction_from_counts
 from toprecon.study.plan import BranchChoice, CutOptions, StudyPlan
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.result import finish
@@ -28,6 +28,7 @@ _QUANTITIES = (
     "reconstructed",
     "shift",
     "acceptance_shift",
+    "possible",
     "fraction_right",
     "slope",
 )
@@ -57,9 +58,14 @@ class BranchRow:
     shift, acceptance_shift : Measured
         Reconstructed minus generated of the same events (paired error); selected minus
         all, generated angle.
+    possible : Measured
+        Signal events in which the branch can be right, over all signal before any
+        selection. Resolved: every quark has a jet of its own. Boosted: all quarks of
+        the hadronic tops are inside their fat jets. Both need the lepton of their
+        channel.
     fraction_right : Measured
-        Resolved: right pairings of the matched events selected. Boosted: selected
-        events with all quarks inside the hadronic fat jet.
+        Selected events. Resolved: right pairings over matched events. Boosted: all
+        quarks inside over all events.
     slope : Measured
         1 - a - b of the flips of the hemisphere.
     """
@@ -75,6 +81,7 @@ class BranchRow:
     reconstructed: Measured
     shift: Measured
     acceptance_shift: Measured
+    possible: Measured
     fraction_right: Measured
     slope: Measured
 
@@ -119,27 +126,29 @@ class BranchComparison:
         ]
 
     def __str__(self) -> str:
-        titles = ("efficiency", "A_FB gen. selected", "reco. - gen.", "right")
+        shares = {"possible": "possible", "efficiency": "selected"}
+        shares["fraction_right"] = "right"
+        values = {
+            "acceptance_shift": "selected - all",
+            "generated_selected": "generated",
+            "shift": "reco. - gen.",
+        }
         lines = [
-            f"{'sample':20} {'branch':10}" + "".join(f"{t:>20}" for t in titles),
+            f"{'sample':18} {'branch':9}"
+            + "".join(f"{title:>10}" for title in shares.values())
+            + "".join(f"{title:>19}" for title in values.values())
         ]
         lines += [
-            f"{r.sample:20} {r.branch:10}"
-            + "".join(
-                f"{value!s:>20}"
-                for value in (
-                    r.efficiency,
-                    r.generated_selected,
-                    r.shift,
-                    r.fraction_right,
-                )
-            )
+            f"{r.sample:18} {r.branch:9}"
+            + "".join(f"{100 * getattr(r, name).value:8.1f} %" for name in shares)
+            + "".join(f"{getattr(r, name)!s:>19}" for name in values)
             for r in self.rows
         ]
-        lines.append(
-            "right: resolved, pairings of the matched events; boosted, events with all "
-            "quarks in the fat jet"
-        )
+        lines += [
+            "possible, selected: of all signal; right: of the selected (and possible)",
+            "possible: resolved, a jet for every quark; boosted, all quarks in fat jets",
+            "selected - all: generated A_FB; generated: A_FB of the selected",
+        ]
         return "\n".join(lines)
 
 
@@ -266,8 +275,23 @@ def _row(name: str, table: EventTable, plan: StudyPlan) -> BranchRow:
         reconstructed=a.reconstructed_signal,
         shift=a.shift,
         acceptance_shift=a.acceptance_shift,
+        possible=_possible(table),
         fraction_right=a.fraction_right,
         slope=a.flips.slope,
+    )
+
+
+def _possible(table: EventTable) -> Measured:
+    """Share of the signal with an angle that is right by the truth."""
+    signal = table["is_signal"]
+    weight = table["weight"][signal]
+    # closest: the angle of the true assignment, or of a fat jet that holds its quarks
+    can = np.isfinite(table["cos_theta_closest"][signal])
+    return fraction_from_counts(
+        weight[can].sum(),
+        weight[~can].sum(),
+        np.sum(weight[can] ** 2),
+        np.sum(weight[~can] ** 2),
     )
 
 

@@ -8,9 +8,10 @@ from typing import TYPE_CHECKING, Any
 from toprecon.errors import StudyError
 from toprecon.statistics import Measured
 from toprecon.study.interpreting import helicity_summary
+from toprecon.study.plan import BranchChoice
 
 if TYPE_CHECKING:
-    from toprecon.asymmetry import AsymmetryResult, EstimatorOptions, EstimatorResult
+    from toprecon.asymmetry import EstimatorOptions, EstimatorResult
     from toprecon.study.result import BeamsResult, StudyResult
 
 CLASS_NAMES = {
@@ -126,22 +127,24 @@ def sentence_of(beams: BeamsResult) -> str:
         f"({100 * flow.efficiency[-1]:.1f} %). A_FB generated "
         f"{a.generated_selected}, reconstructed {a.reconstructed}, "
         f"shift of the signal {a.shift}; generated, all events {a.generated}. "
-        f"{_right_words(a)}."
+        f"{_right_words(beams)}."
     ).replace("+-", "±")
 
 
-def _right_words(a: AsymmetryResult) -> str:
+def _right_words(beams: BeamsResult) -> str:
     """Say what is right in which share of which events."""
-    leaking = "leaking" in a.by_class
-    paired = "b_swapped" in a.by_class or "w_mixed" in a.by_class
-    if leaking and paired:
+    right = beams.asymmetry.fraction_right
+    if beams.branch is BranchChoice.BOOSTED:
         return (
-            "Jets paired correctly, or all quarks inside the fat jet, in "
-            f"{a.fraction_right} of the events matched or with a fat jet"
+            f"All quarks of the hadronic tops inside their fat jets in {right} of the "
+            "selected signal events"
         )
-    if leaking:
-        return f"All quarks inside the hadronic fat jet in {a.fraction_right} of events"
-    return f"Correct pairing in {a.fraction_right} of the matched events"
+    if beams.branch is BranchChoice.PER_EVENT:
+        return (
+            "Jets paired correctly, or all quarks of the hadronic tops inside their "
+            f"fat jets, in {right} of the signal events matched or with tagged fat jets"
+        )
+    return f"Correct pairing in {right} of the matched events"
 
 
 def _helicities_mapping(result: StudyResult) -> dict[str, Any]:
@@ -310,7 +313,7 @@ def _beams_lines(
         f"{found.counting.extrapolated}, fit of the angular terms "
         f"{found.fit.extrapolated}, correlation {found.correlation:.2f}"
     )
-    f, right = a.flips, _right_words(a)
+    f, right = a.flips, _right_words(beams)
     lines += [
         "",
         f"  flips: a = {f.forward_to_backward}, b = {f.backward_to_forward}",

@@ -20,7 +20,7 @@ from toprecon.migration import (
     UnfoldingOptions,
     check_closure,
 )
-from toprecon.study.plan import StudyPlan
+from toprecon.study.plan import BranchChoice, StudyPlan
 from toprecon.study.polarisation import PolarisationEffect, polarisation_effect
 from toprecon.study.sums import SampleSums, StudySums
 from toprecon.study.weights import PURE_BEAMS, SampleFactors, sample_factors
@@ -54,6 +54,8 @@ class BeamsResult:
     polarisation : PolarisationEffect or None
         What the errors of the polarisations do; None if the plan states none, or if
         the mix of beams is not known.
+    branch : BranchChoice
+        How the pairs were reconstructed.
     """
 
     name: str
@@ -64,6 +66,7 @@ class BeamsResult:
     migration: MigrationMatrix
     half_a: MigrationMatrix
     polarisation: PolarisationEffect | None = None
+    branch: BranchChoice = BranchChoice.RESOLVED
 
     def closure(self, options: UnfoldingOptions | None = None) -> ClosureResult:
         """Correct half B with the response of half A.
@@ -227,7 +230,7 @@ def finish(
     for helicity, polarisations in PURE_BEAMS.items():
         if any(s.helicity is helicity for s in samples):
             factors = sample_factors(samples, plan.beams, polarisations=polarisations)
-            by_helicity[helicity.name] = _combine(helicity.name, parts, factors)
+            by_helicity[helicity.name] = _combine(helicity.name, parts, factors, plan)
     undefined: dict[str, int] = {}
     for part in parts:
         for name, count in part.undefined.items():
@@ -236,7 +239,9 @@ def finish(
     return StudyResult(
         plan=plan,
         beams=_with_polarisation(
-            _combine("plan", parts, sample_factors(samples, plan.beams)), parts, plan
+            _combine("plan", parts, sample_factors(samples, plan.beams), plan),
+            parts,
+            plan,
         ),
         by_helicity=by_helicity,
         samples=samples,
@@ -247,7 +252,9 @@ def finish(
     )
 
 
-def _combine(name: str, parts: list[SampleSums], factors: SampleFactors) -> BeamsResult:
+def _combine(
+    name: str, parts: list[SampleSums], factors: SampleFactors, plan: StudyPlan
+) -> BeamsResult:
     """Add the scaled sums of all samples."""
     used = [part for part in parts if factors.factors[part.sample.name] > 0] or parts
     scaled = [(part, factors.factors[part.sample.name]) for part in used]
@@ -273,6 +280,7 @@ def _combine(name: str, parts: list[SampleSums], factors: SampleFactors) -> Beam
         asymmetry.result(),
         migration,
         half_a,
+        branch=plan.study.branch,
     )
 
 
