@@ -14,7 +14,9 @@ from toprecon.study import (
     Binning,
     BranchChoice,
     BranchComparison,
+    StudyPlan,
     TagQuality,
+    apply_cuts,
     branch_plan,
     compare_branches,
     tag_quality,
@@ -125,12 +127,17 @@ class BoostedPanel(Panel):
         if not there or not self.live.is_settled:
             return
         if view == MASSES:
-            table, selected = self.live.table, self.live.selected()
+            table = self.live.table
+            kept = apply_cuts(table, _without_fat_jets(self.live.shown_plan or plan))
+            self._say(
+                "Events that pass the selection and the cuts, those on fat jets "
+                "excepted; all samples, generator weights."
+            )
             self.picture.draw(
                 view,
                 lambda figure: figures.fat_jet_figure(
                     table,
-                    weight=table["weight"] * selected,
+                    weight=table["weight"] * kept.selected,
                     caption=self.shared.caption,
                     figure=figure,
                 ),
@@ -163,9 +170,12 @@ class BoostedPanel(Panel):
         if view == MASSES:
             return (
                 "from toprecon.figures import fat_jet_figure\n"
-                "from toprecon.study import reconstruct_source\n\n"
+                "from toprecon.study import apply_cuts, reconstruct_source\n\n"
                 "table = reconstruct_source(source, plan)\n"
-                "fat_jet_figure(table)  # boosted.mass, boosted.groomed_mass"
+                'fat = "boosted."  # cuts on fat jets are left out\n'
+                "cuts = [c for c in plan.cuts if not c.observable.startswith(fat)]\n"
+                "kept = apply_cuts(table, plan.replace(cuts=tuple(cuts)))\n"
+                'fat_jet_figure(table, weight=table["weight"] * kept.selected)'
             )
         observable = self.observable.value
         low, high = observable.range
@@ -186,7 +196,9 @@ class BoostedPanel(Panel):
         if isinstance(found, BranchComparison):
             rows = found.rows
             self._say(
-                "Both branches on the same events, with the present settings then."
+                "Both branches on the same events, with the settings of the time the "
+                "button was pressed. Can be right: every quark has a jet of its own, or "
+                "all quarks of the hadronic top are inside its fat jet."
             )
             self.picture.draw(
                 view,
@@ -259,6 +271,12 @@ class BoostedPanel(Panel):
             return
         with self.errors.guard():
             self.live.set_settings({"study.branch": branch.value})
+
+
+def _without_fat_jets(plan: StudyPlan) -> StudyPlan:
+    """Return the plan without its cuts on fat jets."""
+    cuts = (cut for cut in plan.cuts if not cut.observable.startswith("boosted."))
+    return plan.replace(cuts=tuple(cuts))
 
 
 def _show(widget: Any, visible: bool) -> None:
