@@ -265,7 +265,7 @@ def test_twenty_thousand_fresh_lepton_jets_events_meet_the_bars():
 @pytest.mark.soak
 @pytest.mark.timeout(1200)
 def test_fresh_all_hadronic_events_meet_the_bars_with_the_default_weights():
-    events = boosted_sample(8_000, seed=203, helicity="LR", decays="all-hadronic")
+    events = boosted_sample(20_000, seed=203, helicity="LR", decays="all-hadronic")
     tops = find_tops(events, channel=Channel.ALL_HADRONIC)
     particles = read_particles(events)
     fat_jets = find_fat_jets(particles, ak.to_numpy(events.sqrt_s), BoostedOptions())

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import itertools
 import re
 
 import numpy as np
@@ -116,6 +117,25 @@ def test_branches_are_drawn_against_energy():
     one = branch_figure(rows[:1], figure=figure)
     assert len(one.legends) == 1
     assert len(one.legends[0].get_texts()) == 1
+
+
+def test_labels_of_many_energies_do_not_overlap():
+    value = Measured(0.5, 0.01)
+    energies = (380.0, 500.0, 700.0, 1000.0, 1400.0, 3000.0)
+    rows = [Point("boosted", e, "LR", value, value, value, value) for e in energies]
+    figure = branch_figure(rows)
+    png(figure)
+    for axes in figure.axes:
+        low, high = axes.get_xlim()
+        boxes = [
+            label.get_window_extent()
+            for label, place in zip(
+                axes.get_xticklabels(), axes.get_xticks(), strict=True
+            )
+            if low <= place <= high
+        ]
+        assert len(boxes) >= 2
+        assert all(a.x1 < b.x0 for a, b in itertools.pairwise(boxes))
 
 
 def test_half_of_the_masses_follows_the_weights():

@@ -10,8 +10,11 @@ import awkward as ak
 import numpy as np
 import pytest
 
+from tests.boosted.conftest import boosted_sample
+from tests.require import require
 from toprecon.boosted import contained, find_tops
 from toprecon.errors import MissingFieldError, StudyError
+from toprecon.generation import GenerationOptions, generate
 from toprecon.study import (
     Channel,
     StudyPlan,
@@ -218,3 +221,48 @@ def test_possible_is_counted_from_the_quarks(branch, found, boosted_files):
     n = len(events)
     binomial = math.sqrt(np.mean(can) * (1 - np.mean(can)) / n)
     assert row.possible.error == pytest.approx(binomial, rel=1e-9)
+
+
+@pytest.mark.soak
+@pytest.mark.timeout(2400)
+@pytest.mark.parametrize("helicity", ["LR", "RL"])
+def test_twenty_thousand_fresh_events_meet_the_bars_in_a_study(helicity):
+    """Shift inside the tag at most 2 % + 1 sigma at 50 % of the signal."""
+    events = boosted_sample(20_000, seed=204, helicity=helicity, decays="lepton+jets")
+    found = compare_branches(events, StudyPlan())
+    print(f"\n{found}")
+    (sample,) = found.samples
+    boosted, resolved = found["boosted", sample], found["resolved", sample]
+    a = abs(boosted.generated_selected.value)
+    assert boosted.efficiency.value >= 0.5
+    assert abs(boosted.shift.value) <= 0.02 * a + boosted.shift.error
+    assert resolved.shift.value < -0.05
+
+
+@pytest.mark.soak
+@pytest.mark.timeout(2400)
+def test_fat_jets_take_over_from_pairs_as_the_energy_rises():
+    """At 600 GeV the quarks of a top fill a hemisphere and more; at 2 TeV a cone."""
+    require("pythia8mc")
+    parts = []
+    for energy in (600.0, 1000.0, 2000.0):
+        options = GenerationOptions(
+            simulation="shower",
+            sqrt_s=energy,
+            minimum_sqrt_s_prime=0.7 * energy,
+            keep_particles=True,
+            helicity="LR",
+            decays="lepton+jets",
+        )
+        parts.append(compare_branches(generate(4000, options, seed=9), StudyPlan()))
+    print("\n" + "\n".join(str(part) for part in parts))
+    rows = [{row.branch: row for row in part.rows} for part in parts]
+    low, high = rows[0], rows[2]
+    assert low["boosted"].possible.value < low["resolved"].possible.value
+    assert high["boosted"].possible.value > 2 * high["resolved"].possible.value
+    # the energies in between follow: 5 binomial errors of 4000 events are 0.04
+    for branch, sign in (("resolved", -1), ("boosted", 1)):
+        shares = [sign * row[branch].possible.value for row in rows]
+        assert shares[0] < shares[1] - 0.04 < shares[2] - 0.08
+    assert abs(high["boosted"].shift.value) < abs(high["resolved"].shift.value)
+    assert high["resolved"].shift.value < low["resolved"].shift.value

@@ -8,6 +8,7 @@ from typing import Any, Protocol
 
 import numpy as np
 from matplotlib.figure import Figure
+from matplotlib.ticker import MaxNLocator
 from numpy.typing import ArrayLike, NDArray
 
 from toprecon.boosted import Roc, TagRates
@@ -214,7 +215,8 @@ def branch_figure(
     )
     names = list(dict.fromkeys(row.branch for row in rows))
     energies = sorted({row.sqrt_s for row in rows})
-    spacing = 0.02 * (energies[-1] - energies[0]) or 0.02 * energies[0]
+    reach = energies[-1] - energies[0]
+    spacing = 0.02 * (reach or energies[0])
     others = iter(OTHERS * len(names))
     looks: dict[str, dict[str, Any]] = {
         name: dict(BRANCHES[name] if name in BRANCHES else next(others))
@@ -258,7 +260,10 @@ def branch_figure(
             axes.set_ylim(0, 1)
         axes.set_title(title, loc="left", fontsize=9, color=style.INK)
         axes.set_xlabel("collision energy [GeV]")
-        axes.set_xticks(energies)
+        if len(energies) < 2 or np.diff(energies).min() > 0.3 * reach:
+            axes.set_xticks(energies)
+        else:
+            axes.xaxis.set_major_locator(MaxNLocator(3))
         axes.set_xlim(
             energies[0] - 3 * len(series) * spacing,
             energies[-1] + 3 * len(series) * spacing,

@@ -126,6 +126,7 @@ class BranchComparison:
         ]
 
     def __str__(self) -> str:
+        width = max(18, *(len(row.sample) for row in self.rows))
         shares = {"possible": "possible", "efficiency": "selected"}
         shares["fraction_right"] = "right"
         values = {
@@ -134,12 +135,12 @@ class BranchComparison:
             "shift": "reco. - gen.",
         }
         lines = [
-            f"{'sample':18} {'branch':9}"
+            f"{'sample':{width}} {'branch':9}"
             + "".join(f"{title:>10}" for title in shares.values())
             + "".join(f"{title:>19}" for title in values.values())
         ]
         lines += [
-            f"{r.sample:18} {r.branch:9}"
+            f"{r.sample:{width}} {r.branch:9}"
             + "".join(f"{100 * getattr(r, name).value:8.1f} %" for name in shares)
             + "".join(f"{getattr(r, name)!s:>19}" for name in values)
             for r in self.rows
