@@ -43,6 +43,24 @@ def test_what_is_held_fixed_is_taken_off():
     assert (np.diag(unsure.covariance) > np.diag(found.covariance)).all()
 
 
+def test_counts_are_fitted_with_templates_of_any_weight():
+    data = np.array([310.0, 260, 190, 150, 105])
+    plain = fit_templates(data, 1e6 * SHAPES, 1e6 * SHAPES)
+    heavy = fit_templates(data, 1e6 * SHAPES, 2e6 * SHAPES, data_weight=1.0)
+    assert heavy.yields == pytest.approx(plain.yields, rel=1e-3)
+    assert heavy.covariance == pytest.approx(plain.covariance, rel=1e-2)
+    same = fit_templates(data, 1e6 * SHAPES, 2e6 * SHAPES)
+    assert same.covariance == pytest.approx(2 * plain.covariance, rel=1e-2)
+
+
+def test_the_size_of_a_template_has_no_error():
+    """One template takes all: the error is that of a Poisson count."""
+    shape = np.array([[4.0, 3, 2, 1]])
+    found = fit_templates(100 * shape[0], shape, shape, data_weight=1.0)
+    assert found.yields[0] == pytest.approx(1000)
+    assert found.covariance[0, 0] == pytest.approx(1000)
+
+
 @pytest.mark.parametrize("weighted", [False, True])
 def test_errors_cover_the_truth_with_small_templates(rng, weighted):
     """400 toys: 68.3 % within 4 binomial standard deviations (fails 1 in 16 000)."""

@@ -48,13 +48,7 @@ from toprecon.study.chunks import (
 from toprecon.study.closing import angle_linearity, closure_of, coupling_dependence
 from toprecon.study.comparing import compare_plans
 from toprecon.study.cutting import Cutting, apply_cuts, passes_cut
-from toprecon.study.datalike import (
-    ANGLE,
-    DataLike,
-    TailFraction,
-    data_like,
-    unmatched_from_tail,
-)
+from toprecon.study.datalike import ANGLE, DataLike, data_like
 from toprecon.study.handoff import HandOff, check_target, read_hand_off, write_hand_off
 from toprecon.study.interpreting import bias_meaning, helicity_summary
 from toprecon.study.live import LiveStudy
@@ -79,6 +73,7 @@ from toprecon.study.scanning import scan_cuts
 from toprecon.study.storing import content_checksum
 from toprecon.study.sums import StudySums, merge, summarise
 from toprecon.study.tagging import TagQuality, tag_quality
+from toprecon.study.tail import TailFraction, unmatched_from_tail
 from toprecon.study.varying import (
     VariationShifts,
     usual_variations,
