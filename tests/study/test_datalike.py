@@ -56,12 +56,16 @@ def test_the_stack_is_what_the_study_selects(table):
     ]  # fmt: skip
     json.dumps(found.to_mapping(), allow_nan=False)
     assert "in data +-" in str(found)
+    pairs = found.stack["lepjets_550"].sum() + found.outside["lepjets_550"]
+    assert f"lepjets_550 {pairs:.0f}, " in str(found)
 
 
 def test_the_cut_on_the_observable_itself_is_not_applied(table):
     found = data_like(table, PLAN, "pairing.chi2")
     assert found.cut is not None
     assert found.cut.high == 15
+    assert "by process before the cut on pairing.chi2: " in str(found)
+    assert "observed A_FB after it " in str(found)
     without = run_study(table, PLAN.replace(cuts=())).asymmetry.selected_sum
     total = found.total.sum() + sum(found.outside.values())
     assert total == pytest.approx(without, rel=1e-12)

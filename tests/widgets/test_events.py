@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import dataclasses
 from pathlib import Path
 
+import numpy as np
 import pytest
 
-from toprecon.study import StudyPlan, branch_plan
+from toprecon.study import StudyPlan, branch_plan, open_events, reconstruct_source
 from toprecon.widgets import EventsPanel
 
 SAMPLES = Path(__file__).parents[2] / "sample_events"
@@ -55,5 +57,25 @@ def test_fat_jets_have_no_tail_of_a_pairing_score():
     panel = EventsPanel(path, branch_plan(PLAN, "boosted"), synchronous=True)
     panel.view.value = "unmatched from the tail"
     assert "choose a branch with it" in panel.text.value
+    assert panel.errors.text == ""
+    panel.close()
+
+
+def test_events_without_truth_are_shown_as_in_data_and_the_tail_says_why_not():
+    plan = StudyPlan()
+    table = reconstruct_source(open_events(SAMPLES / "lepjets_550_LR.root"), plan)
+    columns = dict(table.columns)
+    columns["is_signal"] = np.zeros(len(table), dtype=bool)
+    for name in ("cos_theta_true", "cos_theta_closest", "cos_theta_chosen"):
+        columns[name] = np.full(len(table), np.nan)
+    blind = dataclasses.replace(table, columns=columns)
+    panel = EventsPanel(blind, plan, synchronous=True)
+    panel.view.value = "as in data"
+    assert "observed A_FB" in panel.text.value
+    assert panel.picture.widget.value
+    panel.view.value = "unmatched from the tail"
+    assert "signal events with truth are required" in panel.text.value
+    assert panel.picture.widget.value == b""
+    assert panel.python().startswith("# no templates")
     assert panel.errors.text == ""
     panel.close()

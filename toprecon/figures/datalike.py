@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Mapping
 from typing import Any
 
@@ -15,16 +16,16 @@ from toprecon.figures import style
 FloatArray = NDArray[np.float64]
 
 LOOKS = (
-    ("#8dbbdc", ""),
-    ("#c6dbef", "////"),
-    ("#dfe9f3", "...."),
-    ("#f0b67f", "\\\\\\\\"),
-    ("#e8d08b", "xx"),
-    ("#c9b3d1", "++"),
-    ("#b9c9b0", "oo"),
-    ("#c4c7ca", "--"),
+    ("#9cc6e4", ""),
+    ("#0072b2", "////"),
+    ("#56b4e9", "...."),
+    ("#e69f00", "\\\\\\\\"),
+    ("#d55e00", "xxxx"),
+    ("#009e73", "++++"),
+    ("#cc79a7", "oo"),
+    ("#7b838b", "----"),
 )
-"""Fill and hatching of the parts of a stack, from below."""
+"""Fill and hatching of processes, in the order in which they are given."""
 
 TAIL_LOOKS = {
     "matched": ("matched", style.GREEN, ""),
@@ -56,7 +57,7 @@ def data_like_figure(
         Bins.
     stack, variances : mapping of array, shape (B,)
         Sums of weights and of their squares, by process; the smallest are at the
-        bottom.
+        bottom, and a process keeps its colour.
     outside : float
         Sum of what lies outside the bins, said in the legend.
     is_expected : bool
@@ -75,15 +76,16 @@ def data_like_figure(
         The dark band is the statistical error of the simulation. Below: relative errors
         of the simulation and of the data.
     """
-    figure = style.blank(figure, (7.2, 3.9))
+    figure = style.blank(figure, (7.2, 4.0))
     axes = figure.add_axes((0.115, 0.365, 0.6, 0.575))
     below = figure.add_axes((0.115, 0.145, 0.6, 0.16))
     edges, widths = binning.array, binning.widths
     counts = {n: np.asarray(v, dtype=np.float64) for n, v in stack.items()}
     names = sorted(counts, key=lambda n: counts[n].sum())
     base = np.zeros(len(binning))
-    for place, name in enumerate(names):
-        color, hatch = LOOKS[(len(names) - 1 - place) % len(LOOKS)]
+    looks = dict(zip(counts, itertools.cycle(LOOKS), strict=False))
+    for name in names:
+        color, hatch = looks[name]
         top = base + counts[name]
         axes.stairs(
             top, edges, baseline=base, fill=True, facecolor=color, hatch=hatch,
@@ -106,12 +108,15 @@ def data_like_figure(
                 binning.centres, np.zeros(len(base)),
                 yerr=np.where(base > 0, of_data / base, np.nan), **look,
             )  # fmt: skip
-    highest = float(np.nanmax(relative, initial=0.02))
+    known = relative[np.isfinite(relative)]
+    # one bin with a heavy event must not flatten the others
+    highest = min(known.max(), 3 * float(np.median(known))) if len(known) else 0.02
     below.set(ylim=(-1.25 * highest, 1.25 * highest), ylabel="relative\nerror")
+    limits = [limit for limit in (low, high) if limit is not None]
     for one in (axes, below):
-        for limit in (low, high):
-            if limit is not None:
-                one.axvline(limit, color=style.ORANGE, linewidth=1.5)
+        for k, limit in enumerate(limits):
+            label = "cut, not applied here" if one is axes and k == 0 else None
+            one.axvline(limit, color=style.ORANGE, linewidth=1.5, label=label)
         one.set_xlim(edges[0], edges[-1])
         style.tidy(one)
     axes.set_ylim(0, 1.12 * float((base + error).max(initial=1e-9)))
@@ -138,6 +143,9 @@ def tail_figure(
     data: ArrayLike,
     parts: Mapping[str, ArrayLike],
     *,
+    errors: ArrayLike | None = None,
+    place: float | None = None,
+    is_expected: bool = False,
     caption: str = "",
     figure: Figure | None = None,
 ) -> Figure:
@@ -153,6 +161,12 @@ def tail_figure(
         What was fitted.
     parts : mapping of array, shape (B,)
         ``matched``, ``unmatched`` and ``other``, scaled to the fit.
+    errors : array, shape (B,), optional
+        Errors of the bins in the fit.
+    place : float, optional
+        Where the tail begins, as a line.
+    is_expected : bool
+        Whether the sums are events at a luminosity.
     caption : str
         Small print: what the numbers rest on.
     figure : Figure, optional
@@ -161,12 +175,18 @@ def tail_figure(
     Returns
     -------
     Figure
-        One column per bin, named by its lower edge: the tail would fill the axis.
+        One column per bin, between edges that are written below: on an axis of the
+        score the tail would take all the room. Below: what was fitted less the fit, in
+        errors.
     """
-    figure = style.blank(figure, (7.2, 2.9))
-    axes = figure.add_axes((0.115, 0.26, 0.6, 0.68))
+    figure = style.blank(figure, (7.2, 4.0))
+    axes = figure.add_axes((0.115, 0.415, 0.6, 0.535))
+    below = figure.add_axes((0.115, 0.215, 0.6, 0.15))
     n = len(binning)
     places = np.arange(n + 1, dtype=np.float64)
+    middle = places[:-1] + 0.5
+    seen = np.asarray(data, dtype=np.float64)
+    error = np.zeros(n) if errors is None else np.asarray(errors, dtype=np.float64)
     base = np.zeros(n)
     for name, (label, color, hatch) in TAIL_LOOKS.items():
         if name not in parts:
@@ -177,19 +197,32 @@ def tail_figure(
             hatch=hatch, edgecolor=color, linewidth=0, label=label,
         )  # fmt: skip
         base = top
-    axes.plot(
-        places[:-1] + 0.5, np.asarray(data), "o", color=style.INK, markersize=4,
-        label="events fitted",
-    )  # fmt: skip
-    step = max(1, n // 6)
-    shown = np.arange(0, n, step)
-    axes.set_xticks(shown, [f"{binning.edges[k]:.2g}" for k in shown])
-    axes.set(xlim=(0, n), ylim=(0, 1.12 * max(float(np.max(data)), float(base.max()))))
-    axes.set_xlabel(
-        f"{observable.axis_label}: lower edges of bins of about equal counts"
-    )
-    axes.set_ylabel("sum of weights per bin")
-    style.tidy(axes)
+    look: dict[str, Any] = {"fmt": "o", "color": style.INK, "markersize": 3.5}
+    axes.errorbar(middle, seen, yerr=error, label="events fitted", **look)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        off = np.where(error > 0, (seen - base) / error, np.nan)
+    below.axhspan(-1, 1, color=style.PALE, linewidth=0)
+    below.axhline(0, color=style.FAINT, linewidth=0.8)
+    below.plot(middle, off, "o", color=style.INK, markersize=3.5)
+    reach = max(2.5, 1.2 * float(np.nanmax(np.abs(off), initial=0.0)))
+    below.set(ylim=(-reach, reach), ylabel="pull")
+    if place is not None:
+        for k, one in enumerate((axes, below)):
+            one.axvline(
+                float(np.interp(place, binning.array, places)), color=style.ORANGE,
+                linewidth=1.5, label=None if k else f"tail from {place:.3g}",
+            )  # fmt: skip
+    shown = np.arange(0, n, max(1, -(-n // 10)))
+    below.set_xticks(shown, [_edge(binning.edges[k]) for k in shown])
+    axes.set_xticks(shown)
+    axes.tick_params(labelbottom=False)
+    highest = max(float((seen + error).max(initial=0.0)), float(base.max(initial=1e-9)))
+    axes.set(ylim=(0, 1.12 * highest))
+    axes.set_ylabel(f"{'expected events' if is_expected else 'sum of weights'} per bin")
+    below.set_xlabel(f"{observable.axis_label}, edges of bins of about equal counts")
+    for one in (axes, below):
+        one.set_xlim(0, n)
+        style.tidy(one)
     handles, labels = axes.get_legend_handles_labels()
     axes.legend(
         handles[::-1], labels[::-1], loc="upper left", bbox_to_anchor=(1.02, 1.03),
@@ -197,6 +230,11 @@ def tail_figure(
     )  # fmt: skip
     style.small_print(figure, caption)
     return figure
+
+
+def _edge(value: float) -> str:
+    """Write an edge in two digits, without an exponent."""
+    return f"{value:.0f}" if value >= 10 else f"{value:.1f}"
 
 
 def _band(

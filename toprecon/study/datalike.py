@@ -100,9 +100,14 @@ class DataLike:
     def __str__(self) -> str:
         kind = "expected events" if self.is_expected else "sum of weights"
         parts = ", ".join(
-            f"{n} {v.sum() + self.outside[n]:.6g}" for n, v in self.stack.items()
+            f"{n} {_count(v.sum() + self.outside[n])}" for n, v in self.stack.items()
         )
-        text = f"{kind} by process: {parts}; observed A_FB {self.asymmetry}"
+        before, after = "", ""
+        if self.cut:
+            before, after = f" before the cut on {self.cut.observable}", " after it"
+        text = (
+            f"{kind} by process{before}: {parts}; observed A_FB{after} {self.asymmetry}"
+        )
         if self.is_expected:
             return f"{text}, in data +- {self.expected_error:.4f}"
         return f"{text}; no expected numbers: {self.reason}"
@@ -189,3 +194,8 @@ def _group(sample: Sample) -> str:
     if not sample.is_signal_process:
         return sample.process
     return sample.name.removesuffix(f"_{sample.helicity.name}")
+
+
+def _count(value: float) -> str:
+    """Write a number of events: whole ones if there are many."""
+    return f"{value:.0f}" if abs(value) >= 100 else f"{value:.3g}"

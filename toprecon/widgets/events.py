@@ -171,7 +171,10 @@ class EventsPanel(Panel):
                 found.binning,
                 found.data,
                 found.parts,
-                caption=f"{self.shared.caption} · templates: half A, fitted: half B",
+                errors=found.errors,
+                place=found.place,
+                is_expected=found.is_expected,
+                caption=f"{self.shared.caption}\ntemplates: half A, fitted: half B",
                 figure=figure,
             ),
         )
