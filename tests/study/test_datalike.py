@@ -111,7 +111,7 @@ def test_a_missing_catalogue_is_said(event_data):
     table = reconstruct_source(open_events(path, layout=LAYOUT), PLAN)
     found = data_like(table, PLAN)
     assert not found.is_expected
-    assert str(found).startswith("sum of weights by process: ")
+    assert str(found).startswith("sum of weights by process")
     assert "no expected numbers: sample 'lepjets_500_LR' has no cross section" in str(
         found
     )

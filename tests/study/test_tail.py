@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import json
 import math
 from pathlib import Path
@@ -96,6 +97,29 @@ def test_errors_cover_the_known_share(as_data, settings):
     assert np.mean([f.unmatched.error for f in found]) < np.mean(
         [f.counted.error for f in found]
     )
+
+
+def test_few_heavy_background_events_are_covered():
+    """300 toys with about 7 events of weight 30 per half (fails 1 in 5000).
+
+    The errors hold what an empty bin may have had: share and chi-square within 4
+    standard deviations; for a chi-square of so few counts a fifth is allowed as well.
+    """
+    off, chi2 = [], []
+    for k in range(TOYS):
+        toy = toy_table(
+            3000, seed=90_000 + k, first_id=1 + 3000 * k, unmatched=SHARE,
+            background=0.005,
+        )  # fmt: skip
+        weight = np.where(toy["sample"] == 1, 30.0, 1.0)
+        toy = dataclasses.replace(toy, columns={**toy.columns, "weight": weight})
+        found = unmatched_from_tail(toy, StudyPlan(), observable="toy.quality")
+        off.append((found.unmatched.value - SHARE) / found.unmatched.error)
+        chi2.append(found.chi2 / found.degrees)
+    inside = np.mean(np.abs(off) < 1)
+    assert abs(inside - 0.683) < 4 * math.sqrt(0.683 * 0.317 / TOYS)
+    assert abs(np.std(off) - 1) < 4 / math.sqrt(2 * TOYS)
+    assert np.mean(chi2) == pytest.approx(1, abs=0.2)
 
 
 def test_the_share_true_of_the_events_fitted_explains_some_of_the_error():

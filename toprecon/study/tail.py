@@ -291,14 +291,18 @@ class _Rows:
         ).astype(np.float64)
 
     def templates(self, edges: FloatArray) -> tuple[list[FloatArray], list[FloatArray]]:
-        """Return sums of weights and of their squares, by kind."""
+        """Return sums of weights and their variances, by kind."""
         sums = [self.histogram(edges, kind=k) for k in range(3)]
-        squares = [self.histogram(edges, kind=k, power=2) for k in range(3)]
+        squares = [self.histogram(edges, kind=k, power=2) for k in range(2)]
+        rest, n = np.zeros(len(edges) - 1), len(edges) - 1
         for number in np.unique(self.sample[self.kind == 2]):
-            # a bin without events of a large weight is not known to have none
-            w = self.weight[(self.kind == 2) & (self.sample == number)]
-            squares[2] = squares[2] + float((w**2).mean())
-        return sums, squares
+            # few heavy events: a bin without any is not known to have none, so they are
+            # shared out by the rule of succession (Laplace), (n_b + 1) of (N + bins)
+            one = self.of((self.kind == 2) & (self.sample == number))
+            counts = one.histogram(edges, power=0)
+            total = float((one.weight**2).sum())
+            rest += total * (counts + 1) / (len(one.weight) + n)
+        return sums, [*squares, rest]
 
 
 def _selected(
