@@ -11,7 +11,7 @@ import pytest
 
 from tests.require import require
 from toprecon.cli import main
-from toprecon.study import StudyPlan, read_hand_off
+from toprecon.study import StudyPlan, read_hand_off, reconstruct_source
 
 LAYOUT = str(Path(__file__).parents[1] / "io" / "layouts" / "showered.toml")
 
@@ -222,3 +222,27 @@ def test_variations_are_printed_and_in_the_json(capsys):
     data = json.loads(capsys.readouterr().out)
     assert data["variations"]["b tags lost 2 %"]["efficiency"]["value"] < 0
     assert "both helicities" in data["helicities"]["missing"]
+
+
+def test_variations_go_into_the_hand_off(tmp_path, capsys):
+    samples = Path(__file__).parents[2] / "sample_events"
+    out = tmp_path / "out"
+    words = ["study", str(samples / "lepjets_550_LR.root"), "--out", str(out)]
+    assert main([*words, "--variations", "--json"]) == 0
+    printed = json.loads(capsys.readouterr().out)["variations"]
+    assert json.loads((out / "variations.json").read_text()) == printed
+    assert main([*words, "--replace"]) == 0
+    assert not (out / "variations.json").exists()
+
+
+def test_a_saved_table_cannot_be_varied_and_nothing_is_written(tmp_path, capsys):
+    sample = Path(__file__).parents[2] / "sample_events" / "lepjets_550_LR.root"
+    table = reconstruct_source(str(sample), StudyPlan())
+    path = table.save(tmp_path / "table.parquet")
+    out = tmp_path / "out"
+    assert main(["study", str(path), "--variations", "--out", str(out)]) == 2
+    captured = capsys.readouterr()
+    assert "events are required for variations, which reconstruct them" in captured.err
+    assert captured.out == ""
+    assert not out.exists()
+    assert main(["study", str(path)]) == 0

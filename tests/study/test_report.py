@@ -12,6 +12,7 @@ from toprecon.study import (
     StudyPlan,
     angle_linearity,
     bias_meaning,
+    budget_text,
     helicity_summary,
     open_events,
     reconstruct,
@@ -176,3 +177,21 @@ def test_linearity_prints_a_row_per_truth(study_files, study_plan):
     assert len(lines) == 4
     assert lines[1].endswith(str(found["asymmetry x 0.5"]))
     assert f"slope {found.slope}" in lines[-1]
+
+
+def test_budgets_stand_side_by_side_and_add_up(result, study_files, study_plan):
+    lines = budget_text(result).splitlines()
+    assert lines[0].split("  ")[-1].strip() == "RL"
+    assert "-0.8, +0.3" in lines[0]
+    columns = [result.beams, *result.by_helicity.values()]
+    for column, beams in enumerate(columns):
+        cells = [line[24 + 22 * column :][:22].split(" +- ")[0] for line in lines[1:]]
+        first, *steps, last, total = (float(cell) for cell in cells)
+        # rounded to the second digit of each error
+        assert first + sum(steps) == pytest.approx(last, abs=2e-3)
+        assert sum(steps) == pytest.approx(total, abs=2e-3)
+        b = beams.asymmetry.budget
+        assert str(b["unmatched"].shift) in budget_text(result)
+        assert total == pytest.approx(b.total.value, abs=1e-3)
+    one = run_study(study_files[0], study_plan.with_settings({"beams.luminosity": 0}))
+    assert budget_text(one).splitlines()[0].split() == ["beams", "LR"]

@@ -1,18 +1,14 @@
 from __future__ import annotations
 
-import numpy as np
 import pytest
 
 from toprecon.errors import MissingFieldError, OptionError, StudyError
-from toprecon.generation import GenerationOptions, generate
 from toprecon.study import (
     EventTable,
     ScanAxis,
     ScanOptions,
     StudyPlan,
-    compare_plans,
     open_events,
-    reconstruct,
     run_study,
     scan_cuts,
 )
@@ -82,36 +78,3 @@ def test_wrong_scans_are_explained(mixed, study_plan):
     other = study_plan.with_settings({"pairing.cap": 5})
     with pytest.raises(StudyError, match="must be made with the settings of this pla"):
         scan_cuts(mixed, other, good)
-
-
-def test_two_plans_are_compared_on_events_on_a_table_and_on_two_tables(study_plan):
-    events = generate(1500, GenerationOptions(helicity="LR"), seed=5)
-    plan = StudyPlan()
-    index = [t.name for t in plan.pairing.terms].index("leptonic_top_mass")
-    other = plan.with_settings({f"pairing.terms.{index}.on": False})
-    found = compare_plans(events, plan, other)
-    tables = (reconstruct(events, plan), reconstruct(events, other))
-    same = compare_plans(tables, plan, other)
-    for name, d in found.differences.items():
-        assert d == same[name]
-        for side, table, p in zip(
-            (d.first, d.second), tables, (plan, other), strict=True
-        ):
-            r = getattr(run_study(table, p).asymmetry, name)
-            assert side.value == pytest.approx(r.value, abs=1e-12)
-    assert found.moved.value > 0
-    tight = plan.with_cut("pairing.chi2", high=5)
-    on_table = compare_plans(tables[0], plan, tight)
-    assert on_table.selected_second == 0
-    assert on_table.selected_first > 0
-    assert on_table["generated"].difference.value == 0
-    with pytest.raises(StudyError, match="a table for each is required; got one"):
-        compare_plans(tables[0], plan, other)
-
-
-def test_beams_choose_the_rows_compared(mixed, study_plan):
-    tight = study_plan.with_cut("pairing.chi2", high=5)
-    found = compare_plans(mixed, study_plan, tight, beams="RL")
-    r = run_study(mixed, study_plan).by_helicity["RL"].asymmetry
-    assert found["reconstructed"].first.value == pytest.approx(r.reconstructed.value)
-    assert np.isfinite(found["reconstructed"].difference.error)

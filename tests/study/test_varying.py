@@ -4,7 +4,7 @@ import json
 
 import pytest
 
-from toprecon.errors import OptionError
+from toprecon.errors import InputError, OptionError
 from toprecon.generation import GenerationOptions, generate
 from toprecon.study import (
     StudyPlan,
@@ -67,7 +67,8 @@ def test_usual_variations_of_files_in_a_table(study_files, study_plan):
     text = str(found)
     for name, comparison in found.items():
         assert name in text
-        assert str(comparison["shift"].difference) in text
+        shift = comparison["shift"].difference
+        assert (str(shift) if shift.error else f"{0:>22}") in text
     data = json.loads(json.dumps(found.to_mapping(), allow_nan=False))
     assert data["b tags lost 2 %"]["efficiency"]["value"] < 0
     assert data["jet energy +1 %"]["efficiency"]["error"] >= 0
@@ -83,14 +84,27 @@ def test_beams_are_varied_where_a_luminosity_is_stated(study_plan):
     assert "|P(e-)| 0.01 smaller" in usual_variations(study_plan)
     plan = study_plan.with_settings({"beams.luminosity": 0})
     assert "|P(e-)| 0.01 smaller" not in usual_variations(plan)
+    assert "|P(e-)| 0.01 smaller" not in usual_variations(study_plan, "LR")
 
 
-def test_files_are_compared_like_events(study_files, study_plan):
-    other = study_plan.with_settings({"pairing.top_mass": 174.5})
-    first = compare_plans(study_files, study_plan, other)
-    events = open_events(study_files).read()
-    second = compare_plans(events, study_plan, other)
-    assert str(first) == str(second)
-    cuts = study_plan.with_cut("pairing.chi2", high=5)
-    one = compare_plans(str(study_files[0]), study_plan, cuts, beams="LR")
-    assert one.selected_first > 0 == one.selected_second
+def test_what_cannot_change_is_zero_in_the_table(events):
+    plan = StudyPlan()
+    text = str(variation_shifts(events, plan, {"nothing": plan}))
+    assert text.splitlines()[1].split() == ["nothing", "0", "0", "0", "0"]
+
+
+def test_a_plan_with_other_cuts_keeps_the_observables_it_needs(events):
+    plan = StudyPlan().with_cut("pairing.chi2", high=20)
+    cuts = plan.with_cut("pairing.share", low=0.9)
+    found = variation_shifts(events, plan, {"cut": cuts})["cut"]
+    expected = compare_plans(events, plan, cuts)
+    assert found["efficiency"] == expected["efficiency"]
+    assert found["shift"] == expected["shift"]
+
+
+def test_a_table_cannot_be_varied(events, tmp_path):
+    table = reconstruct(events, StudyPlan())
+    path = table.save(tmp_path / "table.parquet")
+    for source in (table, path, [str(path)]):
+        with pytest.raises(InputError, match="events are required for variations, wh"):
+            variation_shifts(source, StudyPlan())

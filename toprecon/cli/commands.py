@@ -22,6 +22,7 @@ from toprecon.study import (
     VariationShifts,
     calibrate_plan,
     check_target,
+    check_variable,
     produce,
     result_text,
     run_study,
@@ -48,6 +49,8 @@ def study(options: argparse.Namespace) -> int:
     plan = plan.with_settings(dict(_setting(text) for text in options.settings))
     if options.out:
         check_target(Path(options.out), replace=options.replace)
+    if options.variations:
+        check_variable(options.files)
     arguments: dict[str, Any] = {
         "layout": options.layout,
         "parts": options.parts,
@@ -55,10 +58,12 @@ def study(options: argparse.Namespace) -> int:
     }
     with _executor(options.workers) as executor:
         result = run_study(options.files, plan, executor=executor, **arguments)
-    if options.out:
-        folder = result.hand_off(options.out, replace=options.replace)
-        print(f"hand-off written to {folder}", file=sys.stderr)
     shifts = _variations(options, plan) if options.variations else None
+    if options.out:
+        folder = result.hand_off(
+            options.out, replace=options.replace, variations=shifts
+        )
+        print(f"hand-off written to {folder}", file=sys.stderr)
     if options.json:
         data = result.to_mapping()
         if shifts is not None:

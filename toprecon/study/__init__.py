@@ -66,7 +66,12 @@ from toprecon.study.plan import (
 from toprecon.study.polarisation import PolarisationEffect
 from toprecon.study.production import Produced, Recipe, produce
 from toprecon.study.reconstruction import reconstruct
-from toprecon.study.report import result_mapping, result_text, sentence_of
+from toprecon.study.report import (
+    budget_text,
+    result_mapping,
+    result_text,
+    sentence_of,
+)
 from toprecon.study.result import CAUTIONS, BeamsResult, StudyResult, finish
 from toprecon.study.running import CHUNK_SIZE, run_study, summarise_chunk
 from toprecon.study.scanning import scan_cuts
@@ -76,6 +81,7 @@ from toprecon.study.tagging import TagQuality, tag_quality
 from toprecon.study.tail import TailFraction, unmatched_from_tail
 from toprecon.study.varying import (
     VariationShifts,
+    check_variable,
     usual_variations,
     variation_shifts,
 )
@@ -131,9 +137,11 @@ __all__ = [
     "apply_cuts",
     "bias_meaning",
     "branch_plan",
+    "budget_text",
     "calibrate_plan",
     "check_references",
     "check_target",
+    "check_variable",
     "closure_of",
     "compare_branches",
     "compare_plans",

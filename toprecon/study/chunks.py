@@ -12,6 +12,7 @@ import dataclasses
 import hashlib
 import itertools
 import json
+import os
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
@@ -116,7 +117,8 @@ def reconstruct_source(
     Parameters
     ----------
     source : EventSource, EventTable, events, path or list of paths
-        Files are reconstructed chunk by chunk; a table is returned as it is.
+        Files are reconstructed chunk by chunk; a table, or a saved one, is returned as
+        it is.
     plan : StudyPlan
         The plan.
     layout, catalogue : optional
@@ -132,6 +134,9 @@ def reconstruct_source(
     InputError
         If there are none.
     """
+    saved = table_path(source)
+    if saved is not None:
+        source = EventTable.load(saved)
     if isinstance(source, EventTable):
         check_plan(source, plan)
         return source
@@ -144,6 +149,29 @@ def reconstruct_source(
         msg = f"{source}: at least one event is required; got none"
         raise InputError(msg)
     return EventTable.concatenate(tables)
+
+
+def table_path(source: Any) -> str | None:
+    """Return the path of a saved event table, if that is what is given.
+
+    Parameters
+    ----------
+    source : object
+        Whatever a study can be made of: a path, a list of one path, or something else.
+
+    Returns
+    -------
+    str or None
+        Of the Parquet file.
+    """
+    if isinstance(source, (list, tuple)) and len(source) == 1:
+        (source,) = source
+    if not isinstance(source, (str, os.PathLike)):
+        return None
+    path = Path(source)
+    if path.suffix != ".parquet" or not path.is_file():
+        return None
+    return os.fspath(path) if EventTable.is_saved(path) else None
 
 
 def _load_part(

@@ -8,7 +8,7 @@ from typing import Any
 from toprecon.asymmetry import Comparison, Rows, compare
 from toprecon.errors import StudyError
 from toprecon.events import EventTable
-from toprecon.study.chunks import reconstruct_source
+from toprecon.study.chunks import reconstruct_source, table_path
 from toprecon.study.cutting import apply_cuts
 from toprecon.study.plan import StudyPlan
 from toprecon.study.sums import check_plan
@@ -29,8 +29,8 @@ def compare_plans(
     Parameters
     ----------
     source : EventSource, events, path, list of paths, EventTable or pair of tables
-        Events are reconstructed with both plans; one table serves two plans that
-        differ in cuts or beams only; two tables were made with one plan each.
+        Events are reconstructed with both plans; one table, or a saved one, serves two
+        plans that differ in cuts or beams only; two tables were made with one plan each.
     first, second : StudyPlan
         The plans.
     beams : str
@@ -64,6 +64,9 @@ def _tables(
 ) -> tuple[EventTable, EventTable]:
     """Return a table for each plan."""
     same = first.reconstruct_hash == second.reconstruct_hash
+    saved = table_path(source)
+    if saved is not None:
+        source = EventTable.load(saved)
     if isinstance(source, EventTable):
         if not same:
             msg = (

@@ -10,6 +10,7 @@
     provenance.json     version, hashes, inputs, samples, factors, cautions
     result.json         the numbers of the study
     closure.json        half B corrected with the response of half A, three methods
+    variations.json     shifts if the input is varied, where they were asked for
     README.txt          what is what, conventions, cautions
 """
 
@@ -37,6 +38,7 @@ from toprecon.migration import (
 from toprecon.study.plan import StudyPlan
 from toprecon.study.report import result_mapping
 from toprecon.study.result import BeamsResult, StudyResult, provenance_of
+from toprecon.study.varying import VariationShifts
 
 _MARKER = "provenance.json"
 
@@ -64,7 +66,11 @@ class HandOff:
 
 
 def write_hand_off(
-    result: StudyResult, folder: str | os.PathLike[str], *, replace: bool = False
+    result: StudyResult,
+    folder: str | os.PathLike[str],
+    *,
+    replace: bool = False,
+    variations: VariationShifts | None = None,
 ) -> Path:
     """Write a hand-off folder.
 
@@ -76,6 +82,8 @@ def write_hand_off(
         Folder to make.
     replace : bool
         Whether an existing hand-off folder may be replaced.
+    variations : VariationShifts, optional
+        How the results shift if the input is varied, to go with them.
 
     Returns
     -------
@@ -95,6 +103,8 @@ def write_hand_off(
     partial.mkdir()
     try:
         _write_all(result, partial)
+        if variations is not None:
+            _write_json(partial / "variations.json", variations.to_mapping())
         if target.exists():
             old = target.with_name(f".{target.name}.{os.getpid()}.old")
             target.replace(old)
@@ -256,6 +266,10 @@ migration.root / .npz / .json hold the same arrays; migration_LR and migration_R
 for pure beams. hepdata/ is ready for a submission. plan.toml repeats the study.
 closure.json: half B of the events (by identity) corrected with the response of half A;
 residuals are corrected minus generated of the same half, with paired covariance.
+result.json: all numbers of the study; "helicities" are cross sections, A_FB and A_LR of
+both helicities from two runs of opposite polarisations, with their covariance.
+variations.json (if asked for): shifts of the results, varied minus nominal, with paired
+errors.
 
 Cautions: {"; ".join(result.cautions)}.
 """

@@ -106,6 +106,42 @@ def result_text(result: StudyResult) -> str:
     return "\n".join(lines)
 
 
+def budget_text(result: StudyResult) -> str:
+    """Return the distortion budgets of all beams side by side.
+
+    Parameters
+    ----------
+    result : StudyResult
+        A finished study.
+
+    Returns
+    -------
+    str
+        One row per cause, one column per setting of the beams: those of the plan, and
+        each helicity. Every column adds up to its last row; errors are paired.
+    """
+    found = {"all samples": result.beams, **result.by_helicity}
+    if result.beams.is_expected:
+        p = result.plan.beams
+        name = f"{p.electron_polarisation:+g}, {p.positron_polarisation:+g}"
+        found = {name: result.beams, **result.by_helicity}
+    elif len(result.by_helicity) == 1:
+        found = dict(result.by_helicity)
+    budgets = [beams.asymmetry.budget for beams in found.values()]
+    rows = [("beams", list(found))]
+    rows.append(("generated, all signal", [str(b.generated) for b in budgets]))
+    rows += [
+        (f"  {text}", [_signed(b[name].shift) for b in budgets])
+        for name, text in STEP_NAMES.items()
+        if any(b[name].shift.value or b[name].shift.error > 1e-9 for b in budgets)
+    ]
+    rows.append(("reconstructed, all", [str(b.reconstructed) for b in budgets]))
+    rows.append(("difference", [_signed(b.total) for b in budgets]))
+    return "\n".join(
+        f"{name:<24}" + "".join(f"{cell:>22}" for cell in cells) for name, cells in rows
+    )
+
+
 def sentence_of(beams: BeamsResult) -> str:
     """Return the outcome for one setting of the beams in a sentence or two.
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import dataclasses
 import os
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -24,6 +24,9 @@ from toprecon.study.plan import BranchChoice, StudyPlan
 from toprecon.study.polarisation import PolarisationEffect, polarisation_effect
 from toprecon.study.sums import SampleSums, StudySums
 from toprecon.study.weights import PURE_BEAMS, SampleFactors, sample_factors
+
+if TYPE_CHECKING:
+    from toprecon.study.varying import VariationShifts
 
 CAUTIONS = (
     "simulated events; statistical errors only, no systematic ones",
@@ -156,7 +159,11 @@ class StudyResult:
         return (*CAUTIONS, *missing)
 
     def hand_off(
-        self, folder: str | os.PathLike[str], *, replace: bool = False
+        self,
+        folder: str | os.PathLike[str],
+        *,
+        replace: bool = False,
+        variations: VariationShifts | None = None,
     ) -> Path:
         """Write the hand-off folder, complete or not at all.
 
@@ -166,6 +173,8 @@ class StudyResult:
             New folder; see :mod:`toprecon.study.handoff` for its content.
         replace : bool
             Whether an existing hand-off folder may be replaced.
+        variations : VariationShifts, optional
+            How the results shift if the input is varied, to go with them.
 
         Returns
         -------
@@ -174,7 +183,7 @@ class StudyResult:
         """
         from toprecon.study.handoff import write_hand_off
 
-        return write_hand_off(self, folder, replace=replace)
+        return write_hand_off(self, folder, replace=replace, variations=variations)
 
     def to_mapping(self) -> dict[str, Any]:
         """Return the numbers as plain data, for JSON."""

@@ -7,7 +7,6 @@ import functools
 import os
 from collections.abc import Callable, Iterable, Mapping, Sequence
 from concurrent.futures import Executor, as_completed
-from pathlib import Path
 from typing import Any
 
 import awkward as ak
@@ -21,7 +20,7 @@ from toprecon.io import (
     SourceDescription,
     open_events,
 )
-from toprecon.study.chunks import check_references, reconstruct_chunk
+from toprecon.study.chunks import check_references, reconstruct_chunk, table_path
 from toprecon.study.plan import StudyPlan
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.result import StudyResult, finish
@@ -82,8 +81,9 @@ def run_study(
         return finish(summarise(reconstruct(source, plan), plan), plan)
     if not isinstance(source, EventSource):
         paths = _paths(source)
-        if len(paths) == 1 and _is_table(paths[0]):
-            return finish(summarise(EventTable.load(paths[0]), plan), plan)
+        saved = table_path(paths)
+        if saved is not None:
+            return finish(summarise(EventTable.load(saved), plan), plan)
         one = paths[0] if len(paths) == 1 else paths  # one path may be a catalogue
         source = open_events(one, layout=layout, catalogue=catalogue)
     refs = sorted(source.references(chunk_size))
@@ -183,10 +183,3 @@ def _paths(source: Any) -> list[str]:
         msg = "study: at least one file is required; got none"
         raise StudyError(msg)
     return paths
-
-
-def _is_table(path: str) -> bool:
-    """Whether a path names a saved event table."""
-    if Path(path).suffix != ".parquet" or not Path(path).is_file():
-        return False
-    return EventTable.is_saved(path)

@@ -13,6 +13,8 @@ from toprecon.errors import InputError, OptionError
 from toprecon.events import EventTable
 from toprecon.io import EventSource, open_events
 from toprecon.selection import VariationOptions, vary
+from toprecon.statistics import Measured
+from toprecon.study.chunks import table_path
 from toprecon.study.comparing import compare_plans
 from toprecon.study.plan import StudyPlan
 from toprecon.study.reconstruction import reconstruct
@@ -58,19 +60,24 @@ class VariationShifts(Mapping[str, Comparison]):
         heads = ("efficiency", "A_FB gen. selected", "A_FB reconstructed", "shift")
         lines = [f"{'varied - nominal':24}" + "".join(f"{head:>22}" for head in heads)]
         lines += [
-            f"{name:24}" + "".join(f"{found[q].difference!s:>22}" for q in QUANTITIES)
+            f"{name:24}"
+            + "".join(f"{_text(found[q].difference):>22}" for q in QUANTITIES)
             for name, found in self.comparisons.items()
         ]
         return "\n".join(lines)
 
 
-def usual_variations(plan: StudyPlan) -> dict[str, VariationOptions | StudyPlan]:
+def usual_variations(
+    plan: StudyPlan, beams: str = "plan"
+) -> dict[str, VariationOptions | StudyPlan]:
     """Return variations that a first look needs.
 
     Parameters
     ----------
     plan : StudyPlan
         The nominal plan.
+    beams : str
+        ``"plan"``, ``"LR"`` or ``"RL"``; pure beams have no polarisation to vary.
 
     Returns
     -------
@@ -90,7 +97,7 @@ def usual_variations(plan: StudyPlan) -> dict[str, VariationOptions | StudyPlan]
     for sign, step in (("+", 1.0), ("-", -1.0)):
         changed = {"pairing.top_mass": mass + step, "fit.top_mass": mass + step}
         out[f"assumed m_t {sign}1 GeV"] = plan.with_settings(changed)
-    if plan.beams.luminosity > 0:
+    if plan.beams.luminosity > 0 and beams == "plan":
         p = plan.beams.electron_polarisation
         moved = p - 0.01 if p > 0 else p + 0.01
         settings = {"beams.electron_polarisation": moved}
@@ -137,7 +144,7 @@ def variation_shifts(
     OptionError
         If a variation is something else.
     InputError
-        If there are no events.
+        If there are no events, or only a table of what was reconstructed from them.
 
     Examples
     --------
@@ -154,7 +161,8 @@ def variation_shifts(
         print(shifts)
         print(shifts["jet energy +1 %"]["reconstructed"].difference)
     """
-    wanted = usual_variations(plan) if variations is None else dict(variations)
+    check_variable(source)
+    wanted = usual_variations(plan, beams) if variations is None else dict(variations)
     for name, variation in wanted.items():
         if not isinstance(variation, (VariationOptions, StudyPlan)):
             msg = (
@@ -169,13 +177,16 @@ def variation_shifts(
     n_chunks = 1 if in_memory else len(source.references(CHUNK))
     total, done = n_chunks * (1 + len(again)), 0
     parts: dict[str, list[EventTable]] = {name: [] for name in ("", *again)}
+    plans = [plan, *(v for v in wanted.values() if isinstance(v, StudyPlan))]
+    cut_on = {cut.observable for one in plans for cut in one.cuts}
     for events in [source] if in_memory else source.chunks(CHUNK):
         for name, tables in parts.items():
             variation = wanted.get(name, plan)
             if isinstance(variation, VariationOptions):
-                tables.append(reconstruct(vary(events, variation), plan))
+                table = reconstruct(vary(events, variation), plan)
             else:
-                tables.append(reconstruct(events, variation))
+                table = reconstruct(events, variation)
+            tables.append(_slim(table, cut_on))
             done += 1
             if progress is not None:
                 progress(done, total)
@@ -190,6 +201,41 @@ def variation_shifts(
         pair = (nominal, whole.get(name, nominal))
         found[name] = compare_plans(pair, plan, other, beams=beams)
     return VariationShifts(found)
+
+
+def check_variable(source: Any) -> None:
+    """Check that there are events to vary.
+
+    Parameters
+    ----------
+    source : EventSource, events, path or list of paths
+        What is to be varied.
+
+    Raises
+    ------
+    InputError
+        If it is a table of what was reconstructed, or the file of one.
+    """
+    saved = table_path(source)
+    if saved is not None or isinstance(source, EventTable):
+        what = saved or "variations"
+        msg = (
+            f"{what}: events are required for variations, which reconstruct them again; "
+            "got an event table; give the files that it was made from"
+        )
+        raise InputError(msg)
+
+
+def _slim(table: EventTable, cut_on: set[str]) -> EventTable:
+    """Table without the observables that no cut looks at: one is kept per variation."""
+    observables = set(table.observables) - cut_on
+    columns = {n: c for n, c in table.columns.items() if n not in observables}
+    return dataclasses.replace(table, columns=columns)
+
+
+def _text(number: Measured) -> str:
+    """Return a number as text; one that cannot change is 0 without an error."""
+    return "0" if number.value == 0 == number.error else str(number)
 
 
 def _reconstructs(variation: VariationOptions | StudyPlan, plan: StudyPlan) -> bool:

@@ -133,6 +133,12 @@ class ComparePanel(Panel):
 
     def _paint_shifts(self) -> None:
         """Show the table of variations, or say how to get it."""
+        if not self.live.can_reconstruct:
+            self.text.value = (
+                '<p class="toprecon-status">Varying the input needs the events, but '
+                "this desk was given a table: open it with the event files.</p>"
+            )
+            return
         if self._shifts is None:
             self.text.value = (
                 '<p class="toprecon-status">Other jet and lepton energies, resolution, '
