@@ -159,6 +159,16 @@ def test_polarisation_errors_are_what_a_wrong_polarisation_does(which):
     )
 
 
+def test_the_text_holds_values_and_correlations():
+    found = helicity_observables(*results(), RUNS, luminosity=LUMINOSITY)
+    lines = str(found).splitlines()
+    assert [line.split()[0] for line in lines] == [*NAMES, "A_LR"]
+    assert str(found["A_R"]) in lines[3]
+    assert f"{found.correlation[0, 1]:+.2f}" == lines[0].split()[-3]
+    assert str(found.left_right) in lines[4]
+    assert f"{found.left_right_correlation('sigma_L'):+.2f}" == lines[4].split()[-4]
+
+
 def test_more_runs_than_needed_are_combined():
     left, right = results()
     two = helicity_observables(left, right, RUNS, luminosity=LUMINOSITY)

@@ -9,7 +9,7 @@ with one covariance from the data and one from the polarimeters.
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from typing import Any
 
 import numpy as np
@@ -75,6 +75,12 @@ class HelicityObservables:
         position = NAMES.index(name)
         variance = self.covariance[position, position]
         return Measured(float(self.values[position]), float(np.sqrt(variance)))
+
+    def __str__(self) -> str:
+        rows = zip(NAMES, (" fb", " fb", "", ""), self.correlation, strict=True)
+        lines = [_line(name, self[name], unit, row) for name, unit, row in rows]
+        of_ratio = [self.left_right_correlation(name) for name in NAMES]
+        return "\n".join([*lines, _line("A_LR", self.left_right, "", of_ratio)])
 
     def to_mapping(self) -> dict[str, Any]:
         """Return plain data: the four, A_LR, and the covariances."""
@@ -200,6 +206,12 @@ def helicity_observables(
         polarisation_covariance=polarisation,
         efficiencies=(left.efficiency, right.efficiency),
     )
+
+
+def _line(name: str, value: Measured, unit: str, correlations: Iterable[float]) -> str:
+    """Row of the text: a value, and its correlations with the four."""
+    numbers = " ".join(f"{c:+.2f}" for c in correlations)
+    return f"{name:<8}{value!s:>22}{unit:<4} correlations {numbers}"
 
 
 def _hemispheres(result: AsymmetryResult, *, signal: bool) -> tuple[float, float]:

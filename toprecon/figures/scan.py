@@ -111,7 +111,7 @@ def _curve(axes: Any, result: ScanResult, label: str, best: ScanPoint | None) ->
     _label_points(axes.xaxis, points)
     axes.set_xlabel(f"cut on {label}")
     axes.legend(
-        loc="upper right", framealpha=0.85, edgecolor="none", facecolor=style.PAPER,
+        loc="upper right", framealpha=1, edgecolor="none", facecolor=style.PAPER,
         fontsize=8.5, labelcolor=style.INK,
     )  # fmt: skip
     style.heading(axes, f"error of {style.A_FB}")

@@ -199,21 +199,8 @@ def _helicities_lines(result: StudyResult) -> list[str]:
         found = helicity_summary(result)
     except StudyError as error:
         return [*_wrapped(str(error)), ""]
-    names = ("sigma_L", "sigma_R", "A_L", "A_R")
-    units = (" fb", " fb", "", "")
-    lines = [
-        "expected from two runs of opposite polarisations, half the luminosity each"
-    ]
-    lines += [
-        f"  {name:<8}{found[name]!s:>22}{unit:<4} correlations "
-        + " ".join(f"{c:+.2f}" for c in row)
-        for name, unit, row in zip(names, units, found.correlation, strict=True)
-    ]
-    correlations = " ".join(f"{found.left_right_correlation(n):+.2f}" for n in names)
-    lines.append(
-        f"  {'A_LR':<8}{found.left_right!s:>22}     correlations {correlations}"
-    )
-    return [*lines, ""]
+    title = "expected from two runs of opposite polarisations, half the luminosity each"
+    return [title, *(f"  {line}" for line in str(found).splitlines()), ""]
 
 
 def _number(value: float) -> float | None:
