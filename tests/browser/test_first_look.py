@@ -177,3 +177,16 @@ def test_pairing_is_calibrated_by_a_button(desk, expect):
         "button", name="calibrate", exact=True
     ).scroll_into_view_if_needed()
     photograph(desk, "calibrated")
+
+
+def test_input_is_varied_by_a_button_into_a_table(desk, expect):
+    desk.get_by_role("button", name="Compare", exact=True).click()
+    desk.get_by_role("button", name="with variations").click()
+    expect(desk.get_by_text("how much would the results shift")).to_be_visible()
+    desk.get_by_role("button", name="vary the input").click()
+    row = desk.get_by_role("row").filter(has_text="b tags lost 2 %")
+    expect(row).to_be_visible(timeout=60_000)
+    expect(row).to_contain_text("−0.02")
+    expect(desk.locator(".toprecon-error")).to_have_count(0)
+    row.scroll_into_view_if_needed()
+    photograph(desk, "varied")

@@ -60,6 +60,10 @@ def test_python_of_the_panel_gives_what_is_shown():
     exec("\n".join(lines), names)
     found = eval(last, names)
     assert f"{found.selected_both:,} events selected by both" in panel.text.value
+    assert "of those of both none changes the hemisphere" in panel.text.value
+    panel.live.set_plan(panel.live.plan.with_settings({"pairing.top_mass": 180.0}))
+    assert "change the hemisphere" in panel.text.value
+    assert "none" not in panel.text.value
     panel.close()
 
 

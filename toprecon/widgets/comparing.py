@@ -106,12 +106,13 @@ class ComparePanel(Panel):
             ),
         )
         both = comparison.selected_both
-        moved = f"{comparison.moved}".replace("+-", "±")
+        share = f"{comparison.moved}".replace("+-", "±")
+        moved = f"{share} change" if comparison.moved.value else "none changes"
         self.text.value = (
             f'<p class="toprecon-status" role="status">{both:,} events selected by '
             f"both, {comparison.selected_first:,} by the kept plan only, "
             f"{comparison.selected_second:,} by the present one only; of those of both "
-            f"{moved} change the hemisphere.</p><pre>kept: "
+            f"{moved} the hemisphere.</p><pre>kept: "
             f"{html.escape(plan.as_code())}\nnow:  "
             f"{html.escape(self.live.plan.as_code())}</pre>"
         )
@@ -157,8 +158,10 @@ class ComparePanel(Panel):
         now = plan == self.live.plan and beams == self.shared.beams.value
         note = "" if now else "; made with an earlier plan or other beams"
         self.text.value = (
-            f'<table class="toprecon-table"><tr><th>varied minus nominal</th>{head}</tr>'
-            f'{rows}</table><div class="toprecon-help">paired errors{note}</div>'
+            '<table class="toprecon-table toprecon-dense"><tr><th>varied minus nominal'
+            f'</th>{head}</tr>{rows}</table><div class="toprecon-help">paired '
+            "statistical errors; the sizes of the variations are round numbers, not "
+            f"uncertainties{note}</div>"
         )
 
     def _vary(self) -> None:

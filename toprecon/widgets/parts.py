@@ -26,6 +26,9 @@ STYLE = """<style>
   border-left: 3px solid #d55e00; line-height: 1.4}
 .toprecon-help {opacity: 0.75; font-size: 90%; line-height: 1.35}
 .toprecon-table td, .toprecon-table th {padding: 1px 12px 1px 0; text-align: left}
+.toprecon-dense {font-size: 12px; line-height: 1.5}
+.toprecon-dense td {white-space: nowrap}
+.toprecon-dense th {vertical-align: bottom}
 .toprecon pre {line-height: 1.35; margin: 4px 0; white-space: pre-wrap}
 </style>"""
 
