@@ -9,6 +9,8 @@ import numpy as np
 import pytest
 from hypothesis import HealthCheck, settings
 
+from tests.samples import SAMPLES
+
 settings.register_profile(
     "dev", max_examples=25, deadline=None, suppress_health_check=[HealthCheck.too_slow]
 )
@@ -48,4 +50,4 @@ def event_data():
 @pytest.fixture(scope="session")
 def sample_folder():
     """The sample events of the repository."""
-    return Path(__file__).parents[1] / "sample_events"
+    return SAMPLES

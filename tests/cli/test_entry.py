@@ -10,6 +10,7 @@ from pathlib import Path
 import pytest
 
 from tests.require import require
+from tests.samples import SAMPLES
 from toprecon.cli import main
 from toprecon.study import StudyPlan, read_hand_off, reconstruct_source
 
@@ -202,8 +203,7 @@ def test_lab_without_jupyterlab_says_how_to_get_it(tmp_path, monkeypatch, capsys
 
 
 def test_calibrate_writes_a_plan_that_study_takes(tmp_path, capsys):
-    samples = Path(__file__).parents[2] / "sample_events"
-    files = [str(samples / f"lepjets_550_{h}.root") for h in ("LR", "RL")]
+    files = [str(SAMPLES / f"lepjets_550_{h}.root") for h in ("LR", "RL")]
     plan = tmp_path / "plan.toml"
     assert main(["calibrate", *files, "--out", str(plan)]) == 0
     assert "right before -> after" in capsys.readouterr().out
@@ -214,8 +214,7 @@ def test_calibrate_writes_a_plan_that_study_takes(tmp_path, capsys):
 
 
 def test_variations_are_printed_and_in_the_json(capsys):
-    samples = Path(__file__).parents[2] / "sample_events"
-    words = ["study", str(samples / "lepjets_550_LR.root"), "--variations"]
+    words = ["study", str(SAMPLES / "lepjets_550_LR.root"), "--variations"]
     assert main(words) == 0
     assert "jet energy +1 %" in capsys.readouterr().out
     assert main([*words, "--json"]) == 0
@@ -225,9 +224,8 @@ def test_variations_are_printed_and_in_the_json(capsys):
 
 
 def test_variations_go_into_the_hand_off(tmp_path, capsys):
-    samples = Path(__file__).parents[2] / "sample_events"
     out = tmp_path / "out"
-    words = ["study", str(samples / "lepjets_550_LR.root"), "--out", str(out)]
+    words = ["study", str(SAMPLES / "lepjets_550_LR.root"), "--out", str(out)]
     assert main([*words, "--variations", "--json"]) == 0
     printed = json.loads(capsys.readouterr().out)["variations"]
     assert json.loads((out / "variations.json").read_text()) == printed
@@ -236,7 +234,7 @@ def test_variations_go_into_the_hand_off(tmp_path, capsys):
 
 
 def test_a_saved_table_cannot_be_varied_and_nothing_is_written(tmp_path, capsys):
-    sample = Path(__file__).parents[2] / "sample_events" / "lepjets_550_LR.root"
+    sample = SAMPLES / "lepjets_550_LR.root"
     table = reconstruct_source(str(sample), StudyPlan())
     path = table.save(tmp_path / "table.parquet")
     out = tmp_path / "out"

@@ -55,6 +55,11 @@ def test_a_catalogue_opens_and_names_its_samples(catalogue):
     assert np.all((events.sample == 1) == (np.arange(len(events)) >= 15000))
 
 
+def test_a_list_of_one_catalogue_is_that_catalogue(catalogue):
+    names = [sample.name for sample in open_events([catalogue]).samples]
+    assert names == [sample.name for sample in open_events(catalogue).samples]
+
+
 def test_dropped_events_are_said_and_enter_the_normalisation(catalogue):
     source = open_events(catalogue)
     ww = source.samples[1]

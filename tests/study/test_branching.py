@@ -12,6 +12,7 @@ import pytest
 
 from tests.boosted.conftest import boosted_sample
 from tests.require import require
+from tests.samples import SAMPLES
 from toprecon.boosted import contained, find_tops
 from toprecon.errors import MissingFieldError, StudyError
 from toprecon.generation import GenerationOptions, generate
@@ -32,8 +33,7 @@ LAYOUT = Path(__file__).parents[1] / "io" / "layouts" / "showered.toml"
 
 @pytest.fixture(scope="module")
 def boosted_files():
-    folder = Path(__file__).parents[2] / "sample_events"
-    return [str(folder / f"lepjets_1500_{h}.root") for h in ("LR", "RL")]
+    return [str(SAMPLES / f"lepjets_1500_{h}.root") for h in ("LR", "RL")]
 
 
 @pytest.fixture(scope="module")

@@ -2,16 +2,14 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
 import numpy as np
 import pytest
 
+from tests.samples import SAMPLES
 from toprecon.errors import InputError, OptionError, StudyError
 from toprecon.resampling import in_half_a
 from toprecon.study import StudyPlan, calibrate_plan, open_events, reconstruct
 
-SAMPLES = Path(__file__).parents[2] / "sample_events"
 FILES = [str(SAMPLES / f"lepjets_550_{h}.root") for h in ("LR", "RL")]
 
 

@@ -9,6 +9,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from tests.samples import SAMPLES
 from toprecon.errors import OptionError
 from toprecon.events import Binning
 from toprecon.study import (
@@ -19,7 +20,6 @@ from toprecon.study import (
     run_study,
 )
 
-SAMPLES = Path(__file__).parents[2] / "sample_events"
 LAYOUT = Path(__file__).parents[1] / "io" / "layouts" / "showered.toml"
 PLAN = (
     StudyPlan()

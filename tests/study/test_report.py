@@ -1,11 +1,11 @@
 from __future__ import annotations
 
 import json
-from pathlib import Path
 
 import numpy as np
 import pytest
 
+from tests.samples import SAMPLES
 from tests.study.numbers import leaves
 from toprecon.study import (
     PairingClass,
@@ -107,7 +107,7 @@ def test_the_result_in_one_line(result):
     ],
 )
 def test_what_is_right_is_said_for_every_branch(branch, words):
-    sample = Path(__file__).parents[2] / "sample_events" / "lepjets_1500_LR.root"
+    sample = SAMPLES / "lepjets_1500_LR.root"
     loose = {
         "study.branch": branch,
         "selection.min_jets": 0,
@@ -123,7 +123,7 @@ def test_what_is_right_is_said_for_every_branch(branch, words):
 
 @pytest.mark.parametrize("branch", ["boosted", "per event"])
 def test_fat_jets_none_of_which_leaks_are_not_called_pairings(branch):
-    sample = Path(__file__).parents[2] / "sample_events" / "lepjets_1500_LR.root"
+    sample = SAMPLES / "lepjets_1500_LR.root"
     plan = StudyPlan().with_settings({"study.branch": branch})
     plan = plan.with_cut("boosted.n_tagged", low=1)
     events = open_events(str(sample)).read()

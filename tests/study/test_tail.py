@@ -10,6 +10,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from tests.samples import SAMPLES
 from tests.toys import toy_table
 from toprecon.errors import OptionError, StudyError
 from toprecon.events import PairingClass
@@ -20,7 +21,6 @@ from toprecon.study import (
     unmatched_from_tail,
 )
 
-SAMPLES = Path(__file__).parents[2] / "sample_events"
 LAYOUT = Path(__file__).parents[1] / "io" / "layouts" / "showered.toml"
 PLAN = StudyPlan().with_settings(
     {

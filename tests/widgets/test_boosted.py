@@ -2,16 +2,14 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
 import pytest
 
+from tests.samples import SAMPLES
 from toprecon.study import StudyPlan
 from toprecon.widgets import Desk
 from toprecon.widgets.boosted import BoostedPanel
 
 PNG = b"\x89PNG"
-SAMPLES = Path(__file__).parents[2] / "sample_events"
 SIGNAL = [str(SAMPLES / f"lepjets_1500_{h}.root") for h in ("LR", "RL")]
 
 

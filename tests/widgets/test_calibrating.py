@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
+from tests.samples import SAMPLES
 from toprecon.study import StudyPlan
 from toprecon.widgets.desk import Desk
 from toprecon.widgets.pairing import PairingPanel
 
-SAMPLES = Path(__file__).parents[2] / "sample_events"
 FILES = [str(SAMPLES / f"lepjets_550_{h}.root") for h in ("LR", "RL")]
 
 

@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
+from tests.samples import SAMPLES
 from toprecon.study import StudyPlan, reconstruct_source
 from toprecon.widgets import ComparePanel
 
-FILE = str(Path(__file__).parents[2] / "sample_events" / "lepjets_550_LR.root")
+FILE = str(SAMPLES / "lepjets_550_LR.root")
 
 
 def test_variations_are_made_by_a_button_and_say_when_they_are_old():

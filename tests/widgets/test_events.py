@@ -3,15 +3,14 @@
 from __future__ import annotations
 
 import dataclasses
-from pathlib import Path
 
 import numpy as np
 import pytest
 
+from tests.samples import SAMPLES
 from toprecon.study import StudyPlan, branch_plan, open_events, reconstruct_source
 from toprecon.widgets import EventsPanel
 
-SAMPLES = Path(__file__).parents[2] / "sample_events"
 PLAN = StudyPlan().with_settings({"beams.luminosity": 500})
 
 

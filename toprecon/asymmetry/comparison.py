@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from toprecon.errors import StudyError
 from toprecon.events import EventTable, PairingClass
-from toprecon.statistics import Measured
+from toprecon.statistics import Measured, weighted_share
 
 FloatArray = NDArray[np.float64]
 
@@ -256,8 +256,7 @@ def _share(
     found: NDArray[np.bool_], among: NDArray[np.bool_], weight: FloatArray
 ) -> Measured:
     """Weighted share with its error."""
-    value, psi = _mean(found.astype(np.float64), among, weight)
-    return Measured(value, float(np.sqrt(psi @ psi)))
+    return weighted_share(weight[among], found[among])
 
 
 def _classes(

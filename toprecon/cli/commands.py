@@ -78,8 +78,9 @@ def study(options: argparse.Namespace) -> int:
 
 def _variations(options: argparse.Namespace, plan: StudyPlan) -> VariationShifts:
     """Carry out the usual variations of a study."""
-    one = options.files[0] if len(options.files) == 1 else options.files
-    return variation_shifts(one, plan, layout=options.layout, progress=_progress())
+    return variation_shifts(
+        options.files, plan, layout=options.layout, progress=_progress()
+    )
 
 
 def calibrate(options: argparse.Namespace) -> int:
@@ -105,9 +106,12 @@ def calibrate(options: argparse.Namespace) -> int:
         raise InputError(msg)
     plan = StudyPlan.load(options.plan) if options.plan else StudyPlan()
     plan = plan.with_settings(dict(_setting(text) for text in options.settings))
-    one = options.files[0] if len(options.files) == 1 else options.files
     found = calibrate_plan(
-        one, plan, score=options.score, layout=options.layout, progress=_progress()
+        options.files,
+        plan,
+        score=options.score,
+        layout=options.layout,
+        progress=_progress(),
     )
     path = found.plan.save(options.out)
     print(found)

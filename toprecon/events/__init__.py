@@ -10,7 +10,14 @@ from __future__ import annotations
 from toprecon.events.arrays import components, dense, momenta, record_of
 from toprecon.events.binning import Binning
 from toprecon.events.cutflow import CutFlow
-from toprecon.events.enums import Branch, Channel, Helicity, PairingClass, Status
+from toprecon.events.enums import (
+    BEAMS,
+    Branch,
+    Channel,
+    Helicity,
+    PairingClass,
+    Status,
+)
 from toprecon.events.fields import (
     EVENT_FIELDS,
     TOPS_FIELDS,
@@ -28,6 +35,7 @@ from toprecon.events.samples import SIGNAL_PROCESS, Sample
 from toprecon.events.table import COLUMNS, EventTable
 
 __all__ = [
+    "BEAMS",
     "COLUMNS",
     "EVENT_FIELDS",
     "SIGNAL_PROCESS",

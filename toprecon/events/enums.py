@@ -24,6 +24,10 @@ class Helicity(IntEnum):
     RL = 1
 
 
+BEAMS = {Helicity.LR.name: "e-L e+R", Helicity.RL.name: "e-R e+L"}
+"""Pure beams as people write them."""
+
+
 class Status(IntEnum):
     """Why an event has, or has not, a reconstructed pair."""
 

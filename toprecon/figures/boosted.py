@@ -13,7 +13,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from toprecon.boosted import Roc, TagRates
 from toprecon.constants import TOP_MASS, W_MASS
-from toprecon.events import EventTable
+from toprecon.events import BEAMS, EventTable
 from toprecon.figures import style
 from toprecon.statistics import Measured
 
@@ -179,10 +179,7 @@ def tag_figure(
     axes.set(xlim=(0, 1), ylim=(0.7 * lowest, 1.2))
     axes.set(xlabel="share of tops tagged", ylabel="share of other fat jets tagged")
     style.tidy(axes)
-    axes.legend(
-        loc="upper left", bbox_to_anchor=(1.03, 1.03), frameon=False, fontsize=9,
-        labelcolor=style.INK, labelspacing=0.9,
-    )  # fmt: skip
+    style.legend_beside(axes, place=1.03)
     style.small_print(figure, caption)
     return figure
 
@@ -233,7 +230,7 @@ def branch_figure(
             "mfc": looks[name]["color"] if helicity == "LR" else style.PAPER,
             "markersize": 5.5,
             "linewidth": 1.2,
-            "label": f"{name}, {_BEAMS.get(helicity, helicity)}",
+            "label": f"{name}, {BEAMS.get(helicity, helicity)}",
         }
         x = [r.sqrt_s + (place - 0.5 * (len(series) - 1)) * spacing for r in mine]
         scale = [r.generated_selected.value or math.nan for r in mine]
@@ -276,9 +273,6 @@ def branch_figure(
     )  # fmt: skip
     style.small_print(figure, caption)
     return figure
-
-
-_BEAMS = {"LR": "e-L e+R", "RL": "e-R e+L"}
 
 
 def _median_and_half(

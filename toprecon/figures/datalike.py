@@ -128,11 +128,7 @@ def data_like_figure(
     if outside:
         share = outside / (outside + base.sum())
         axes.plot([], [], " ", label=f"({100 * share:.1f} % outside)")
-    handles, labels = axes.get_legend_handles_labels()
-    axes.legend(
-        handles[::-1], labels[::-1], loc="upper left", bbox_to_anchor=(1.02, 1.03),
-        frameon=False, fontsize=9, labelcolor=style.INK,
-    )  # fmt: skip
+    style.legend_beside(axes, upside_down=True)
     style.small_print(figure, caption)
     return figure
 
@@ -223,11 +219,7 @@ def tail_figure(
     for one in (axes, below):
         one.set_xlim(0, n)
         style.tidy(one)
-    handles, labels = axes.get_legend_handles_labels()
-    axes.legend(
-        handles[::-1], labels[::-1], loc="upper left", bbox_to_anchor=(1.02, 1.03),
-        frameon=False, fontsize=9, labelcolor=style.INK,
-    )  # fmt: skip
+    style.legend_beside(axes, upside_down=True)
     style.small_print(figure, caption)
     return figure
 

@@ -142,10 +142,7 @@ def purity_figure(
     )
     axes.set_ylabel("share")
     style.tidy(axes)
-    axes.legend(
-        loc="upper left", bbox_to_anchor=(1.02, 1.03), frameon=False, fontsize=9,
-        labelcolor=style.INK, labelspacing=0.9,
-    )  # fmt: skip
+    style.legend_beside(axes)
     style.small_print(figure, caption)
     return figure
 

@@ -123,6 +123,27 @@ def signed(number: Measured) -> str:
     return f"{number.value:+.{number.digits}f}".replace("-", "−")
 
 
+def legend_beside(axes: Any, *, place: float = 1.02, upside_down: bool = False) -> None:
+    """Put the legend to the right of the axes.
+
+    Parameters
+    ----------
+    axes : Axes
+        With labelled artists.
+    place : float
+        Left end, in widths of the axes.
+    upside_down : bool
+        Whether the last artist comes first, as in a stack.
+    """
+    handles, labels = axes.get_legend_handles_labels()
+    step = -1 if upside_down else 1
+    axes.legend(
+        handles[::step], labels[::step], loc="upper left", bbox_to_anchor=(place, 1.03),
+        frameon=False, fontsize=9, labelcolor=INK,
+        labelspacing=None if upside_down else 0.9,
+    )  # fmt: skip
+
+
 def heading(axes: Any, text: str) -> None:
     """Write the one line that says what is seen."""
     axes.set_title(text, loc="left", fontsize=10.5, color=INK, pad=8)

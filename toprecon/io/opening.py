@@ -39,7 +39,7 @@ def open_events(
     ----------
     paths : path, list of paths, or mapping of sample names to paths
         Files, patterns (``*``), ``file:tree``, or URLs. Without a mapping every file
-        is a sample named by its stem. A ``.toml`` file is a catalogue.
+        is a sample named by its stem. One ``.toml`` file is a catalogue.
     layout : FileLayout or path, optional
         What the columns mean; by default the files are recognised.
     catalogue : Catalogue or path, optional
@@ -62,6 +62,8 @@ def open_events(
     InputError
         If a file is missing, damaged, or contradicts what is said about it.
     """
+    if isinstance(paths, (list, tuple)) and len(paths) == 1:
+        (paths,) = paths  # it may be a catalogue
     if isinstance(paths, str | os.PathLike) and Path(paths).suffix == ".toml":
         paths, catalogue = None, catalogue if catalogue is not None else paths
     if (paths is None) == (catalogue is None):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import ArrayLike
 
 from toprecon.statistics.measured import Measured
 
@@ -60,3 +61,28 @@ def fraction_from_counts(
     """
     a = asymmetry_from_counts(passed, failed, passed_variance, failed_variance)
     return Measured(0.5 * (1 + a.value), 0.5 * a.error)
+
+
+def weighted_share(weight: ArrayLike, those: ArrayLike) -> Measured:
+    """Return the share of some rows in the sum of weights, with its error.
+
+    Parameters
+    ----------
+    weight : array, shape (E,)
+        Weights.
+    those : array of bool, shape (E,)
+        The rows whose share is wanted.
+
+    Returns
+    -------
+    Measured
+        As :func:`fraction_from_counts` has it; NaN for an empty sample.
+    """
+    w, found = np.asarray(weight, dtype=np.float64), np.asarray(those, dtype=bool)
+    inside, outside = w[found], w[~found]
+    return fraction_from_counts(
+        float(inside.sum()),
+        float(outside.sum()),
+        float(inside @ inside),
+        float(outside @ outside),
+    )

@@ -38,6 +38,11 @@ class Measured:
     def to_mapping(self) -> dict[str, float | None]:
         """Return plain data; a missing number is ``None``."""
         return {
-            "value": self.value if math.isfinite(self.value) else None,
-            "error": self.error if math.isfinite(self.error) else None,
+            "value": plain_number(self.value),
+            "error": plain_number(self.error),
         }
+
+
+def plain_number(value: float) -> float | None:
+    """Return a number for plain data, or ``None`` if it is missing or infinite."""
+    return float(value) if math.isfinite(value) else None

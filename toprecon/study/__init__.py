@@ -16,6 +16,7 @@ from toprecon.asymmetry import (
     ScanOptions,
 )
 from toprecon.events import (
+    BEAMS,
     Binning,
     Branch,
     Channel,
@@ -89,6 +90,7 @@ from toprecon.study.weights import SampleFactors, sample_factors
 
 __all__ = [
     "ANGLE",
+    "BEAMS",
     "CAUTIONS",
     "CHUNK_SIZE",
     "OBSERVABLES",

@@ -6,14 +6,13 @@ import dataclasses
 from collections.abc import Callable, Mapping
 from typing import Any
 
-import awkward as ak
 import numpy as np
 
 from toprecon.errors import StudyError
 from toprecon.events import Channel, EventTable
-from toprecon.io import EventSource, open_events
-from toprecon.statistics import Measured, fraction_from_counts
-from toprecon.study.plan import BranchChoice, CutOptions, StudyPlan
+from toprecon.statistics import Measured, weighted_share
+from toprecon.study.plan import BranchChoice, StudyPlan
+from toprecon.study.reading import event_chunks, opened
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.result import finish
 from toprecon.study.sums import summarise
@@ -173,14 +172,14 @@ def branch_plan(plan: StudyPlan, branch: str) -> StudyPlan:
     choice = BranchChoice(branch)
     plan = plan.with_settings({"study.branch": choice.value})
     if choice is BranchChoice.RESOLVED:
-        return plan.replace(cuts=_without(plan.cuts, ("boosted.",)))
+        return plan.without_cuts_on("boosted.")
     plan = plan.with_settings(
         {
             "selection.min_jets": 0,
             "selection.btag_high": 0.0,
             "selection.btag_low": 0.0,
         }
-    ).replace(cuts=_without(plan.cuts, ("pairing.", "fit.")))
+    ).without_cuts_on("pairing.", "fit.")
     if any(cut.observable.startswith("boosted.") for cut in plan.active_cuts):
         return plan
     tagged = 2 if plan.study.channel is Channel.ALL_HADRONIC else 1
@@ -221,13 +220,11 @@ def compare_branches(
     StudyError
         If there is no top-pair sample.
     """
-    if not isinstance(source, (EventSource, ak.Array)):
-        source = open_events(source, layout=layout, catalogue=catalogue)
+    source = opened(source, layout=layout, catalogue=catalogue)
     both = ("resolved", "boosted")
     used = dict(plans) if plans else {n: branch_plan(plan, n) for n in both}
     parts: dict[str, list[EventTable]] = {name: [] for name in used}
-    n_chunks = 1 if isinstance(source, ak.Array) else len(source.references(CHUNK))
-    chunks = [source] if isinstance(source, ak.Array) else source.chunks(CHUNK)
+    n_chunks, chunks = event_chunks(source, CHUNK)
     done = 0
     for events in chunks:
         for name, one in used.items():
@@ -285,19 +282,6 @@ def _row(name: str, table: EventTable, plan: StudyPlan) -> BranchRow:
 def _possible(table: EventTable) -> Measured:
     """Share of the signal with an angle that is right by the truth."""
     signal = table["is_signal"]
-    weight = table["weight"][signal]
     # closest: the angle of the true assignment, or of a fat jet that holds its quarks
     can = np.isfinite(table["cos_theta_closest"][signal])
-    return fraction_from_counts(
-        weight[can].sum(),
-        weight[~can].sum(),
-        np.sum(weight[can] ** 2),
-        np.sum(weight[~can] ** 2),
-    )
-
-
-def _without(
-    cuts: tuple[CutOptions, ...], starts: tuple[str, ...]
-) -> tuple[CutOptions, ...]:
-    """Return the cuts on other observables."""
-    return tuple(cut for cut in cuts if not cut.observable.startswith(starts))
+    return weighted_share(table["weight"][signal], can)

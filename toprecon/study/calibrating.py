@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from toprecon.errors import OptionError, StudyError
 from toprecon.events import Channel, PairingClass, has_truth, samples_of
-from toprecon.io import EventSource, open_events, read_chunk
+from toprecon.io import read_chunk
 from toprecon.pairing import (
     Calibration,
     PairingOptions,
@@ -24,9 +24,10 @@ from toprecon.pairing import (
 )
 from toprecon.resampling import in_half_a
 from toprecon.selection import select
-from toprecon.statistics import Measured
+from toprecon.statistics import Measured, weighted_share
 from toprecon.study.branches import is_signal_process
 from toprecon.study.plan import StudyPlan
+from toprecon.study.reading import opened
 from toprecon.truth import classify, closest_assignment
 
 MOST_EVENTS = 100_000
@@ -35,7 +36,6 @@ MOST_EVENTS = 100_000
 LEAST_RIGHT = 200
 """Matched events of half A below which densities would be noise."""
 
-BoolArray = NDArray[np.bool_]
 Progress = Callable[[int, int], Any]
 
 _PAIRED = [PairingClass.CORRECT, PairingClass.B_SWAPPED, PairingClass.W_MIXED]
@@ -202,14 +202,13 @@ def _chunks(
     progress: Progress | None,
 ) -> Iterator[ak.Array]:
     """Yield usable events, at most so many of every sample."""
+    source = opened(source, layout=layout, catalogue=catalogue)
     if isinstance(source, ak.Array):
         names = [s.name for s in samples_of(source)]
         sample = ak.to_numpy(source.sample)
         for index in range(len(names)):
             yield _usable(source[sample == index], plan)[:most]
         return
-    if not isinstance(source, EventSource):
-        source = open_events(source, layout=layout, catalogue=catalogue)
     refs = sorted(source.references())
     found: dict[str, int] = {}
     for done, ref in enumerate(refs, 1):
@@ -272,42 +271,30 @@ def _quality(
     after: PairingOptions,
 ) -> Iterable[CalibrationQuality]:
     """Fraction right of every sample on half B."""
+    channel = plan.study.channel
     half_b = events[~in_half_a(ak.to_numpy(events.id))]
-    one, paired = _right(half_b, plan, before)
-    two, _ = _right(half_b, plan, after)
+    matching = closest_assignment(half_b, channel=channel)
+
+    def kinds(options: PairingOptions) -> NDArray[np.uint8]:
+        return classify(
+            ak.to_numpy(pair(half_b, options, channel=channel).assignment),
+            matching.assignment,
+            has_truth=has_truth(half_b),
+            is_signal_process=np.ones(len(half_b), dtype=bool),
+            matched=matching.angle < plan.truth.match_angle,
+            channel=channel,
+        )
+
+    one, two = kinds(before), kinds(after)
     names = [s.name for s in samples_of(half_b)]
     sample = ak.to_numpy(half_b.sample)
     for index in np.unique(sample):
-        use = paired & (sample == index)
+        use = np.isin(one, _PAIRED) & (sample == index)
+        weight = np.ones(int(use.sum()))
         yield CalibrationQuality(
             sqrt_s=energy,
             sample=names[index],
-            before=_fraction(one[use]),
-            after=_fraction(two[use]),
-            events=int(use.sum()),
+            before=weighted_share(weight, one[use] == PairingClass.CORRECT),
+            after=weighted_share(weight, two[use] == PairingClass.CORRECT),
+            events=len(weight),
         )
-
-
-def _right(
-    events: ak.Array, plan: StudyPlan, options: PairingOptions
-) -> tuple[BoolArray, BoolArray]:
-    """Whether paired right, and whether matched, shape (E,) each."""
-    channel = plan.study.channel
-    matching = closest_assignment(events, channel=channel)
-    kind = classify(
-        ak.to_numpy(pair(events, options, channel=channel).assignment),
-        matching.assignment,
-        has_truth=has_truth(events),
-        is_signal_process=np.ones(len(events), dtype=bool),
-        matched=matching.angle < plan.truth.match_angle,
-        channel=channel,
-    )
-    return kind == PairingClass.CORRECT, np.isin(kind, _PAIRED)
-
-
-def _fraction(right: BoolArray) -> Measured:
-    """Fraction and its binomial error."""
-    if not len(right):
-        return Measured(np.nan, np.nan)
-    value = float(right.mean())
-    return Measured(value, float(np.sqrt(value * (1 - value) / len(right))))

@@ -12,7 +12,6 @@ import dataclasses
 import hashlib
 import itertools
 import json
-import os
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
@@ -23,13 +22,12 @@ from toprecon.errors import InputError, StudyError
 from toprecon.events import EventTable
 from toprecon.io import (
     ChunkRef,
-    EventSource,
     InputReport,
     SourceDescription,
-    open_events,
     read_chunk,
 )
 from toprecon.study.plan import StudyPlan
+from toprecon.study.reading import opened, table_path
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.sums import check_plan
 
@@ -140,38 +138,14 @@ def reconstruct_source(
     if isinstance(source, EventTable):
         check_plan(source, plan)
         return source
+    source = opened(source, layout=layout, catalogue=catalogue)
     if isinstance(source, ak.Array):
         return reconstruct(source, plan)
-    if not isinstance(source, EventSource):
-        source = open_events(source, layout=layout, catalogue=catalogue)
     tables = [reconstruct(events, plan) for events in source.chunks()]
     if not tables:
         msg = f"{source}: at least one event is required; got none"
         raise InputError(msg)
     return EventTable.concatenate(tables)
-
-
-def table_path(source: Any) -> str | None:
-    """Return the path of a saved event table, if that is what is given.
-
-    Parameters
-    ----------
-    source : object
-        Whatever a study can be made of: a path, a list of one path, or something else.
-
-    Returns
-    -------
-    str or None
-        Of the Parquet file.
-    """
-    if isinstance(source, (list, tuple)) and len(source) == 1:
-        (source,) = source
-    if not isinstance(source, (str, os.PathLike)):
-        return None
-    path = Path(source)
-    if path.suffix != ".parquet" or not path.is_file():
-        return None
-    return os.fspath(path) if EventTable.is_saved(path) else None
 
 
 def _load_part(

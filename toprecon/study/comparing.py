@@ -8,9 +8,10 @@ from typing import Any
 from toprecon.asymmetry import Comparison, Rows, compare
 from toprecon.errors import StudyError
 from toprecon.events import EventTable
-from toprecon.study.chunks import reconstruct_source, table_path
+from toprecon.study.chunks import reconstruct_source
 from toprecon.study.cutting import apply_cuts
 from toprecon.study.plan import StudyPlan
+from toprecon.study.reading import table_path
 from toprecon.study.sums import check_plan
 from toprecon.study.weights import weighted_rows
 

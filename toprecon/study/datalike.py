@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from toprecon.events import Binning, EventTable, Observable, Sample, find_observable
-from toprecon.statistics import Measured, asymmetry_from_counts
+from toprecon.statistics import Measured, asymmetry_from_counts, plain_number
 from toprecon.study.distributions import TableMasks
 from toprecon.study.plan import CutOptions, StudyPlan
 from toprecon.study.sums import check_plan
@@ -92,9 +92,7 @@ class DataLike:
             "expected": self.is_expected,
             "reason": self.reason,
             "asymmetry": self.asymmetry.to_mapping(),
-            "expected_error": (
-                self.expected_error if math.isfinite(self.expected_error) else None
-            ),
+            "expected_error": plain_number(self.expected_error),
         }
 
     def __str__(self) -> str:

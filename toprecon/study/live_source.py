@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 from collections.abc import Callable
 from typing import Any
 
@@ -13,6 +12,7 @@ from toprecon.errors import InputError, StudyError
 from toprecon.events import EventTable
 from toprecon.io import EventSource, InputReport, open_events, read_chunk
 from toprecon.study.plan import StudyPlan
+from toprecon.study.reading import table_path
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.sums import check_plan
 
@@ -136,10 +136,9 @@ class LiveSource:
 
 def _opened(source: Any, layout: Any, catalogue: Any) -> Any:
     """Return a table or a source for whatever names one."""
-    if isinstance(source, (str, os.PathLike)):
-        path = os.fspath(source)
-        if path.endswith(".parquet") and EventTable.is_saved(path):
-            return EventTable.load(path)
+    saved = table_path(source)
+    if saved is not None:
+        return EventTable.load(saved)
     return open_events(source, layout=layout, catalogue=catalogue)
 
 

@@ -42,9 +42,9 @@ from toprecon.study.plan_files import (
     read_calibration,
     read_calibrations,
     write_calibrations,
-    write_text,
 )
 from toprecon.study.settings import changes, put, toml_data, toml_value
+from toprecon.study.storing import write_text
 from toprecon.truth import TruthOptions
 
 PLAN_VERSION = 1
@@ -383,6 +383,22 @@ class StudyPlan(Options):
             for item in calibrations
         ]
         return self.replace(pairing=self.pairing.calibrated(*tables, **settings))
+
+    def without_cuts_on(self, *starts: str) -> Self:
+        """Return the plan without cuts on observables that start so.
+
+        Parameters
+        ----------
+        *starts : str
+            Such as ``"boosted."``.
+
+        Returns
+        -------
+        StudyPlan
+            The other cuts keep their order.
+        """
+        cuts = (cut for cut in self.cuts if not cut.observable.startswith(starts))
+        return self.replace(cuts=tuple(cuts))
 
     def as_code(self) -> str:
         """Return a Python expression that makes this plan from the default one.

@@ -10,7 +10,6 @@ from __future__ import annotations
 
 import hashlib
 import json
-import os
 import tomllib
 from pathlib import Path
 from typing import Any
@@ -18,6 +17,7 @@ from typing import Any
 import tomli_w
 
 from toprecon.errors import InputError, OptionError
+from toprecon.study.storing import write_text
 
 SECTION, KEY = "pairing", "calibrations"
 
@@ -98,13 +98,6 @@ def read_calibrations(data: dict[str, Any], plan: Path) -> dict[str, Any]:
         for name in names
     ]
     return {**data, SECTION: {**section, KEY: tables}}
-
-
-def write_text(path: Path, text: str) -> None:
-    """Write a text file, complete or not at all."""
-    partial = path.with_name(f".{path.name}.{os.getpid()}.part")
-    partial.write_text(text, encoding="utf-8")
-    partial.replace(path)
 
 
 def read_calibration(path: Path, where: str) -> dict[str, Any]:

@@ -28,7 +28,7 @@ from toprecon.generation import GenerationOptions, generate
 from toprecon.generation import describe as describe_sample
 from toprecon.io import open_events, write_events
 from toprecon.options import Options, option
-from toprecon.study.storing import content_checksum, rounded
+from toprecon.study.storing import content_checksum, rounded, write_text
 
 CATALOGUE_HEADER = """# Samples and their cross sections [fb], written with the events.
 # Top pairs: tree level with radiation along the beams, times the branching fraction of
@@ -264,9 +264,7 @@ def _write_catalogues(recipe: Recipe, made: list[Produced], folder: Path) -> Non
         catalogues.setdefault(sample.catalogue, {})[sample.name] = entry
     for name, samples in catalogues.items():
         text = CATALOGUE_HEADER + tomli_w.dumps({"samples": samples})
-        partial = folder / f".{name}.part"
-        partial.write_text(text, encoding="utf-8")
-        partial.replace(folder / name)
+        write_text(folder / name, text)
 
 
 @dataclasses.dataclass(frozen=True)

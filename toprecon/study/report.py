@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-import math
 from typing import TYPE_CHECKING, Any
 
 from toprecon.errors import StudyError
-from toprecon.statistics import Measured
+from toprecon.events import BEAMS
+from toprecon.statistics import Measured, plain_number
 from toprecon.study.interpreting import helicity_summary
 from toprecon.study.plan import BranchChoice
 
@@ -93,8 +93,7 @@ def result_text(result: StudyResult) -> str:
             )
         lines += _beams_lines(title, result.beams, plan.asymmetry)
     for name, beams in result.by_helicity.items():
-        meaning = {"LR": "e-L e+R", "RL": "e-R e+L"}[name]
-        title = f"beams {name} ({meaning})"
+        title = f"beams {name} ({BEAMS[name]})"
         lines += _beams_lines(title, beams, plan.asymmetry)
     lines += _helicities_lines(result)
     for observable, count in result.undefined.items():
@@ -203,18 +202,13 @@ def _helicities_lines(result: StudyResult) -> list[str]:
     return [title, *(f"  {line}" for line in str(found).splitlines()), ""]
 
 
-def _number(value: float) -> float | None:
-    """Return a number, or ``None`` if it is missing."""
-    return float(value) if math.isfinite(value) else None
-
-
 def _estimators_mapping(found: EstimatorResult) -> dict[str, Any]:
     """Numbers of both estimators."""
     out: dict[str, Any] = {
         "spectrum": found.spectrum,
         "largest_cosine": found.largest_cosine,
-        "correlation": _number(found.correlation),
-        "chi2": _number(found.angular_fit.chi2),
+        "correlation": plain_number(found.correlation),
+        "chi2": plain_number(found.angular_fit.chi2),
         "degrees": found.angular_fit.degrees,
     }
     for name in ("counting", "fit"):
@@ -234,7 +228,12 @@ def _beams_mapping(beams: BeamsResult, options: EstimatorOptions) -> dict[str, A
     return {
         "expected": beams.is_expected,
         "cut_flow": [
-            {"step": step, "count": int(n), "sum": float(s), "efficiency": _number(e)}
+            {
+                "step": step,
+                "count": int(n),
+                "sum": float(s),
+                "efficiency": plain_number(e),
+            }
             for step, n, s, e in zip(
                 flow.steps, flow.counts, flow.sums, flow.efficiency, strict=True
             )
@@ -253,16 +252,16 @@ def _beams_mapping(beams: BeamsResult, options: EstimatorOptions) -> dict[str, A
                 "total_shift",
             )
         },
-        "expected_error": _number(a.expected_error) if beams.is_expected else None,
+        "expected_error": plain_number(a.expected_error) if beams.is_expected else None,
         "polarisation_error": (
-            _number(beams.polarisation.error("reconstructed"))
+            plain_number(beams.polarisation.error("reconstructed"))
             if beams.polarisation
             else None
         ),
         "estimators": _estimators_mapping(a.estimators(options)),
         "efficiency": a.efficiency.to_mapping(),
         "fraction_right": a.fraction_right.to_mapping(),
-        "background_share": _number(a.background_share),
+        "background_share": plain_number(a.background_share),
         "flips": {
             name: getattr(a.flips, name).to_mapping()
             for name in (

@@ -20,8 +20,9 @@ from toprecon.io import (
     SourceDescription,
     open_events,
 )
-from toprecon.study.chunks import check_references, reconstruct_chunk, table_path
+from toprecon.study.chunks import check_references, reconstruct_chunk
 from toprecon.study.plan import StudyPlan
+from toprecon.study.reading import table_path
 from toprecon.study.reconstruction import reconstruct
 from toprecon.study.result import StudyResult, finish
 from toprecon.study.sums import StudySums, merge, summarise
@@ -84,8 +85,7 @@ def run_study(
         saved = table_path(paths)
         if saved is not None:
             return finish(summarise(EventTable.load(saved), plan), plan)
-        one = paths[0] if len(paths) == 1 else paths  # one path may be a catalogue
-        source = open_events(one, layout=layout, catalogue=catalogue)
+        source = open_events(paths, layout=layout, catalogue=catalogue)
     refs = sorted(source.references(chunk_size))
     check_references(refs)
     description = source.description

@@ -1,8 +1,10 @@
-"""Storing: numbers rounded to what they are worth, and a hash of the content."""
+"""Storing: rounded numbers, a hash of the content, text files whole or not at all."""
 
 from __future__ import annotations
 
 import hashlib
+import os
+from pathlib import Path
 from typing import Any
 
 import awkward as ak
@@ -74,6 +76,13 @@ def rounded(events: ak.Array, bits: int) -> ak.Array:
         )
     )
     return with_samples(out, samples_of(events))
+
+
+def write_text(path: Path, text: str) -> None:
+    """Write a text file, complete or not at all."""
+    partial = path.with_name(f".{path.name}.{os.getpid()}.part")
+    partial.write_text(text, encoding="utf-8")
+    partial.replace(path)
 
 
 def _round_leaf(layout: Any, bits: int) -> Any:

@@ -23,10 +23,10 @@ from toprecon.boosted import (
 )
 from toprecon.errors import StudyError
 from toprecon.events import Channel
-from toprecon.io import EventSource, open_events
 from toprecon.resampling import in_half_a
 from toprecon.study.branches import is_signal_process
 from toprecon.study.plan import StudyPlan
+from toprecon.study.reading import event_chunks, opened
 
 FloatArray = NDArray[np.float64]
 FatJets = dict[str, FloatArray]
@@ -111,10 +111,8 @@ def tag_quality(
     The likelihood ratio is calibrated on half A of the events by identity; all rates
     are those of half B.
     """
-    if not isinstance(source, (EventSource, ak.Array)):
-        source = open_events(source, layout=layout, catalogue=catalogue)
-    n_chunks = 1 if isinstance(source, ak.Array) else len(source.references(CHUNK))
-    chunks = [source] if isinstance(source, ak.Array) else source.chunks(CHUNK)
+    source = opened(source, layout=layout, catalogue=catalogue)
+    n_chunks, chunks = event_chunks(source, CHUNK)
     parts: tuple[list[FatJets], list[FatJets]] = ([], [])
     for done, events in enumerate(chunks, 1):
         is_top = is_signal_process(events)

@@ -15,7 +15,13 @@ from numpy.typing import NDArray
 
 from toprecon.errors import OptionError, StudyError
 from toprecon.events import Binning, EventTable, PairingClass
-from toprecon.statistics import Measured, TemplateFit, fit_templates
+from toprecon.statistics import (
+    Measured,
+    TemplateFit,
+    fit_templates,
+    plain_number,
+    weighted_share,
+)
 from toprecon.study.distributions import TableMasks
 from toprecon.study.plan import CutOptions, StudyPlan
 from toprecon.study.sums import check_plan
@@ -102,8 +108,8 @@ class TailFraction:
             "unmatched": self.unmatched.to_mapping(),
             "counted": self.counted.to_mapping(),
             "true": self.true.to_mapping(),
-            "pull": _number(self.pull),
-            "expected_error": _number(self.expected_error),
+            "pull": plain_number(self.pull),
+            "expected_error": plain_number(self.expected_error),
             "beyond": self.beyond.to_mapping(),
             "place": self.place,
             "edges": list(self.binning.edges),
@@ -245,9 +251,9 @@ def unmatched_from_tail(
     return TailFraction(
         unmatched=_share_of(found),
         counted=_share_of(fitted(_two_bins(model, start, observable))),
-        true=_share(seen.weight[signal], seen.kind[signal] == 1),
+        true=weighted_share(seen.weight[signal], seen.kind[signal] == 1),
         expected_error=in_data,
-        beyond=_share(seen.weight, seen.value >= start),
+        beyond=weighted_share(seen.weight, seen.value >= start),
         place=start,
         binning=Binning.of(edges),
         data=seen.histogram(edges),
@@ -360,17 +366,3 @@ def _share_of(found: TemplateFit) -> Measured:
     gradient = np.array([-second, first]) / total**2
     variance = float(gradient @ found.covariance @ gradient)
     return Measured(float(second / total), math.sqrt(max(variance, 0.0)))
-
-
-def _share(weight: FloatArray, those: BoolArray) -> Measured:
-    """Return a weighted share with its error; missing without weight."""
-    total = weight.sum()
-    if not total > 0:
-        return Measured(math.nan, math.nan)
-    value = float(weight[those].sum() / total)
-    variance = float((weight**2 * (those - value) ** 2).sum() / total**2)
-    return Measured(value, math.sqrt(variance))
-
-
-def _number(value: float) -> float | None:
-    return value if math.isfinite(value) else None

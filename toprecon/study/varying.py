@@ -6,17 +6,14 @@ import dataclasses
 from collections.abc import Callable, Iterator, Mapping
 from typing import Any
 
-import awkward as ak
-
 from toprecon.asymmetry import Comparison
 from toprecon.errors import InputError, OptionError
 from toprecon.events import EventTable
-from toprecon.io import EventSource, open_events
 from toprecon.selection import VariationOptions, vary
 from toprecon.statistics import Measured
-from toprecon.study.chunks import table_path
 from toprecon.study.comparing import compare_plans
 from toprecon.study.plan import StudyPlan
+from toprecon.study.reading import event_chunks, opened, table_path
 from toprecon.study.reconstruction import reconstruct
 
 CHUNK = 20_000
@@ -171,15 +168,13 @@ def variation_shifts(
             )
             raise OptionError(msg)
     again = [n for n, v in wanted.items() if _reconstructs(v, plan)]
-    if not isinstance(source, (EventSource, ak.Array)):
-        source = open_events(source, layout=layout, catalogue=catalogue)
-    in_memory = isinstance(source, ak.Array)
-    n_chunks = 1 if in_memory else len(source.references(CHUNK))
+    source = opened(source, layout=layout, catalogue=catalogue)
+    n_chunks, chunks = event_chunks(source, CHUNK)
     total, done = n_chunks * (1 + len(again)), 0
     parts: dict[str, list[EventTable]] = {name: [] for name in ("", *again)}
     plans = [plan, *(v for v in wanted.values() if isinstance(v, StudyPlan))]
     cut_on = {cut.observable for one in plans for cut in one.cuts}
-    for events in [source] if in_memory else source.chunks(CHUNK):
+    for events in chunks:
         for name, tables in parts.items():
             variation = wanted.get(name, plan)
             if isinstance(variation, VariationOptions):

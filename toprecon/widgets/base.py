@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import html
+from collections.abc import Callable
 from typing import Any, ClassVar
 
 import ipywidgets
 
+from toprecon.study import BEAMS as PURE
 from toprecon.study import BeamsResult, LiveStudy, StudyPlan, sentence_of
+from toprecon.study.live_tasks import Work
 from toprecon.widgets.parts import STYLE, ErrorLine, close_all
 
-BEAMS = {"plan": "of the plan", "LR": "e-L e+R", "RL": "e-R e+L"}
+BEAMS = {"plan": "of the plan", **PURE}
 """Settings of the beams that results are there for, as people read them."""
 
 
@@ -256,6 +259,37 @@ class Panel:
         with self.live.lock, self.errors.guard():
             if self.on_view and self.live.shown_plan is not None:
                 self.draw()
+
+    def run_for(
+        self,
+        button: Any,
+        doing: str,
+        work: Work,
+        then: Callable[[Any], Any],
+        *,
+        unit: str = "chunks",
+    ) -> None:
+        """Do long work for a button, which is off meanwhile.
+
+        Parameters
+        ----------
+        button : Button
+            What was pressed.
+        doing, work, then, unit
+            See :meth:`LiveStudy.run`; an error is shown in the line of errors.
+        """
+        button.disabled = True
+
+        def finished(found: Any) -> None:
+            button.disabled = False
+            then(found)
+
+        def failed(error: Exception) -> None:
+            button.disabled = False
+            self.errors.show_error(error)
+
+        with self.errors.guard():
+            self.live.run(doing, work, finished, failed=failed, unit=unit)
 
     def close(self) -> None:
         """Free every widget, and stop the study if it was made here."""

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import html
-from collections.abc import Callable
 from typing import Any
 
 import ipywidgets
@@ -14,7 +12,6 @@ from toprecon.study import (
     Binning,
     BranchChoice,
     BranchComparison,
-    StudyPlan,
     TagQuality,
     apply_cuts,
     branch_plan,
@@ -23,7 +20,7 @@ from toprecon.study import (
 )
 from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import OptionControls
-from toprecon.widgets.parts import Picture, helping, labelled
+from toprecon.widgets.parts import Picture, helping, labelled, said
 
 BINS = 60
 OWN = [item for item in OBSERVABLES if item.name.startswith("boosted.")]
@@ -128,7 +125,9 @@ class BoostedPanel(Panel):
             return
         if view == MASSES:
             table = self.live.table
-            kept = apply_cuts(table, _without_fat_jets(self.live.shown_plan or plan))
+            kept = apply_cuts(
+                table, (self.live.shown_plan or plan).without_cuts_on("boosted.")
+            )
             self._say(
                 "Events that pass the selection and the cuts, those on fat jets "
                 "excepted; all samples, generator weights."
@@ -172,9 +171,7 @@ class BoostedPanel(Panel):
                 "from toprecon.figures import fat_jet_figure\n"
                 "from toprecon.study import apply_cuts, reconstruct_source\n\n"
                 "table = reconstruct_source(source, plan)\n"
-                'fat = "boosted."  # cuts on fat jets are left out\n'
-                "cuts = [c for c in plan.cuts if not c.observable.startswith(fat)]\n"
-                "kept = apply_cuts(table, plan.replace(cuts=tuple(cuts)))\n"
+                'kept = apply_cuts(table, plan.without_cuts_on("boosted."))\n'
                 'fat_jet_figure(table, weight=table["weight"] * kept.selected)'
             )
         observable = self.observable.value
@@ -227,40 +224,34 @@ class BoostedPanel(Panel):
             )
 
     def _say(self, text: str) -> None:
-        self.text.value = (
-            f'<p class="toprecon-status">{html.escape(text)}</p>' if text else ""
-        )
+        self.text.value = said(text)
 
     def _start(self) -> None:
         """Do what the view shows, in the worker."""
         source, plan = self.live.source, self.live.plan
         if self.view.value == BRANCHES:
-            self._run(
+            self.run_for(
+                self.start,
                 "comparing the branches",
                 lambda report: compare_branches(source, plan, progress=report),
-                "_branches",
+                lambda found: self._keep(branches=found),
             )
         else:
-            self._run(
+            self.run_for(
+                self.start,
                 "measuring the tag",
                 lambda report: tag_quality(source, plan, progress=report),
-                "_quality",
+                lambda found: self._keep(quality=found),
             )
 
-    def _run(self, doing: str, work: Callable[[Any], Any], place: str) -> None:
-        self.start.disabled = True
-
-        def then(found: Any) -> None:
-            self.start.disabled = False
-            setattr(self, place, found)
-            self.redraw()
-
-        def failed(error: Exception) -> None:
-            self.start.disabled = False
-            self.errors.show_error(error)
-
-        with self.errors.guard():
-            self.live.run(doing, work, then, failed=failed)
+    def _keep(
+        self,
+        branches: BranchComparison | None = None,
+        quality: TagQuality | None = None,
+    ) -> None:
+        self._branches = branches or self._branches
+        self._quality = quality or self._quality
+        self.redraw()
 
     def _take(self) -> None:
         with self.errors.guard():
@@ -271,12 +262,6 @@ class BoostedPanel(Panel):
             return
         with self.errors.guard():
             self.live.set_settings({"study.branch": branch.value})
-
-
-def _without_fat_jets(plan: StudyPlan) -> StudyPlan:
-    """Return the plan without its cuts on fat jets."""
-    cuts = (cut for cut in plan.cuts if not cut.observable.startswith("boosted."))
-    return plan.replace(cuts=tuple(cuts))
 
 
 def _show(widget: Any, visible: bool) -> None:

@@ -67,19 +67,16 @@ class CalibrationControls:
         """Calibrate in the worker; the plan follows."""
         live = self._panel.live
         plan, score, tags = live.plan, self.score.value, self.tags.value
-        self.button.disabled = True
-        with self._panel.errors.guard():
-            live.run(
-                "calibrating",
-                lambda report: calibrate_plan(
-                    live.source, plan, score=score, tags=tags, progress=report
-                ),
-                self._finished,
-                failed=self._failed,
-            )
+        self._panel.run_for(
+            self.button,
+            "calibrating",
+            lambda report: calibrate_plan(
+                live.source, plan, score=score, tags=tags, progress=report
+            ),
+            self._finished,
+        )
 
     def _finished(self, found: CalibratedPlan) -> None:
-        self.button.disabled = False
         rows = "".join(
             f"<tr><td>{html.escape(q.sample)}</td><td>{q.sqrt_s:g}</td>"
             f"<td>{q.events:,}</td><td>{_percent(q.before)}</td>"
@@ -93,10 +90,6 @@ class CalibrationControls:
             "of half B</div>"
         )
         self._panel.live.configure(pairing=found.plan.pairing)
-
-    def _failed(self, error: Exception) -> None:
-        self.button.disabled = False
-        self._panel.errors.show_error(error)
 
 
 def _percent(value: Any) -> str:

@@ -16,7 +16,7 @@ from toprecon.study import (
     variation_shifts,
 )
 from toprecon.widgets.base import Panel
-from toprecon.widgets.parts import Picture, helping
+from toprecon.widgets.parts import Picture, helping, said
 
 KEPT, VARIED = "with a kept plan", "with variations"
 COLUMNS = {
@@ -84,9 +84,9 @@ class ComparePanel(Panel):
             self._paint_shifts()
             return
         if self.kept is None:
-            self.text.value = (
-                '<p class="toprecon-status">Keep the present plan, then change '
-                "anything: the differences appear here.</p>"
+            self.text.value = said(
+                "Keep the present plan, then change anything: the differences appear "
+                "here."
             )
             return
         if not self.live.is_settled:
@@ -135,16 +135,15 @@ class ComparePanel(Panel):
     def _paint_shifts(self) -> None:
         """Show the table of variations, or say how to get it."""
         if not self.live.can_reconstruct:
-            self.text.value = (
-                '<p class="toprecon-status">Varying the input needs the events, but '
-                "this desk was given a table: open it with the event files.</p>"
+            self.text.value = said(
+                "Varying the input needs the events, but this desk was given a table: "
+                "open it with the event files."
             )
             return
         if self._shifts is None:
-            self.text.value = (
-                '<p class="toprecon-status">Other jet and lepton energies, resolution, '
-                "b tags and assumed masses, of round sizes: how much would the results "
-                "shift?</p>"
+            self.text.value = said(
+                "Other jet and lepton energies, resolution, b tags and assumed masses, "
+                "of round sizes: how much would the results shift?"
             )
             return
         plan, beams, shifts = self._shifts
@@ -166,29 +165,20 @@ class ComparePanel(Panel):
 
     def _vary(self) -> None:
         """Carry out the variations in the worker."""
-        live, beams = self.live, self.shared.beams.value
-        source, plan = live.source, live.plan
-        self.vary.disabled = True
+        source, plan = self.live.source, self.live.plan
+        beams = self.shared.beams.value
 
         def then(found: VariationShifts) -> None:
-            self.vary.disabled = False
             self._shifts = (plan, beams, found)
             self.redraw()
 
-        def failed(error: Exception) -> None:
-            self.vary.disabled = False
-            self.errors.show_error(error)
-
-        with self.errors.guard():
-            live.run(
-                "varying",
-                lambda report: variation_shifts(
-                    source, plan, beams=beams, progress=report
-                ),
-                then,
-                failed=failed,
-                unit="reconstructions",
-            )
+        self.run_for(
+            self.vary,
+            "varying",
+            lambda report: variation_shifts(source, plan, beams=beams, progress=report),
+            then,
+            unit="reconstructions",
+        )
 
     def _keep(self) -> None:
         with self.errors.guard():

@@ -10,7 +10,7 @@ import numpy as np
 from toprecon import figures
 from toprecon.study import PairingClass
 from toprecon.widgets.base import Panel
-from toprecon.widgets.parts import Picture
+from toprecon.widgets.parts import Picture, said
 
 KINDS = [
     ("any pairing", ""),
@@ -69,10 +69,10 @@ class EventPanel(Panel):
         if self._made_for != made_for:
             self._made_for = made_for
             self._rows = self._of_the_kind()
-            self.of.value = f'<p class="toprecon-status">of {len(self._rows):,}</p>'
+            self.of.value = said(f"of {len(self._rows):,}")
             self.number.max = max(1, len(self._rows))
         if self.row < 0:
-            self.of.value = '<p class="toprecon-status">no such event is selected</p>'
+            self.of.value = said("no such event is selected")
             return
         view = self.live.view_event(self.row)
         caption = (

@@ -14,7 +14,7 @@ from toprecon.study import ANGLE, data_like, unmatched_from_tail
 from toprecon.widgets.base import Panel
 from toprecon.widgets.controls import OptionControls
 from toprecon.widgets.observables import observable_in, offer
-from toprecon.widgets.parts import Picture, helping, labelled
+from toprecon.widgets.parts import Picture, helping, labelled, said
 
 FLOW, DATA, TAIL = "cut flow", "as in data", "unmatched from the tail"
 
@@ -181,8 +181,7 @@ class EventsPanel(Panel):
         self._say(str(found))
 
     def _say(self, text: str) -> None:
-        text = html.escape(text.replace("+-", "±"))
-        self.text.value = f'<p class="toprecon-status">{text}</p>' if text else ""
+        self.text.value = said(text.replace("+-", "±"))
 
 
 def _cross_section(sample: Any) -> str:

@@ -131,6 +131,11 @@ def labelled(text: str) -> Any:
     return ipywidgets.HTML(f'<div class="toprecon-title">{html.escape(text)}</div>')
 
 
+def said(text: str) -> str:
+    """Return a sentence in HTML; nothing for no text."""
+    return f'<p class="toprecon-status">{html.escape(text)}</p>' if text else ""
+
+
 def helping(text: str) -> Any:
     """Return one line of help."""
     return ipywidgets.HTML(f'<div class="toprecon-help">{html.escape(text)}</div>')

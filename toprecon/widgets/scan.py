@@ -11,7 +11,12 @@ import numpy as np
 from toprecon import figures
 from toprecon.study import Keep, ScanAxis, ScanOptions, scan_cuts
 from toprecon.widgets.base import Panel
-from toprecon.widgets.observables import BY_NAME, USUALLY_CUT_FROM_ABOVE, offer
+from toprecon.widgets.observables import (
+    BY_NAME,
+    USUALLY_CUT_FROM_ABOVE,
+    observable_in,
+    offer,
+)
 from toprecon.widgets.parts import Picture, helping
 
 POINTS = 50
@@ -98,7 +103,9 @@ class ScanPanel(Panel):
         )
         self._point = None  # until there is one
         self._point = point = result.best
-        labels = tuple(BY_NAME[axis.observable].axis_label for axis in axes)
+        labels = tuple(
+            observable_in(self.live.plan, axis.observable).axis_label for axis in axes
+        )
         caption = self.shared.caption
         if not self.shared.result.is_expected:
             caption += " · events of the simulation, no luminosity stated"
