@@ -27,7 +27,7 @@ class EventsPanel(Panel):
     def build(self) -> list[Any]:
         """Make the widgets, top to bottom."""
         self.view = ipywidgets.ToggleButtons(
-            options=[FLOW, DATA, TAIL], value=FLOW, style={"button_width": "13em"}
+            options=[FLOW, DATA, TAIL], value=FLOW, style={"button_width": "15em"}
         )
         self.observable = ipywidgets.Dropdown(
             description="show",
